@@ -1,0 +1,1 @@
+"""Files: the native layout, layout descriptions for other files, series, inspection."""

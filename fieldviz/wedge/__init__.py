@@ -1,0 +1,1 @@
+"""The wedge: blocks, levels, exact geometry, halos, coordinates, sampling, the demo disc."""
