@@ -1,0 +1,1 @@
+"""What each command does; `fieldviz.cli` only parses its arguments."""

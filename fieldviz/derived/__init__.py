@@ -1,0 +1,1 @@
+"""Quantities derived from the fields of a snapshot."""

@@ -1,0 +1,1 @@
+"""Scenes: descriptions, layers, cameras, colour, page layout."""

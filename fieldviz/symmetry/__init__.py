@@ -1,0 +1,1 @@
+"""Even, odd or one-sided: mirror rules, scores, angles, the verdict."""

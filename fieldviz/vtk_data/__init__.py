@@ -1,0 +1,1 @@
+"""Snapshots as VTK objects, for any VTK program."""

@@ -1,0 +1,1 @@
+"""Launching surfaces and what leaves through them."""
