@@ -1,8 +1,9 @@
 """Density, pressure, azimuthal velocity and field of the Saltmarsh disc at points.
 
 The wind keeps k (mass per flux), omega and l (angular momentum per mass) constant along each
-field line. Mass load k = K'/psi0', omega = R_f^-3/2, wind density rho_w = rho_b [1 + (x^2 - 1)/eps]^-2 with x = R/R_f and
-rho_b = K'/(R_f v_b); then R B_phi = -sgn(k) omega R_f^2 eps sqrt(rho_b)/(1 + y), y = |k|/sqrt(rho_w), and
+field line. Mass load k = K'/psi0', omega = R_f^-3/2, wind density
+rho_w = rho_b [1 + (x^2 - 1)/eps]^-2 with x = R/R_f and rho_b = K'/(R_f v_b); then
+R B_phi = -sgn(k) omega R_f^2 eps sqrt(rho_b)/(1 + y), y = |k|/sqrt(rho_w), and
 v_phi = omega R + k B_phi/rho_w. The Alfven point is at x^2 = lambda.
 """
 
@@ -86,17 +87,21 @@ def _wind(disc: SaltmarshDisc, r: Array, theta: Array) -> _Wind:
 
 
 def _slanted_wind(disc: SaltmarshDisc, r: Array, theta: Array) -> _Wind:
-    """The odd wind: below, |v_R|, v_phi and B_phi are those of the mirrored point above.
+    """The odd wind: below, |v_R|, v_phi and the field's torque are those of the mirrored point.
 
     The lower mass flux is set by its own footpoint, so the density follows from
-    rho |v_R| = t K'(R_f)/R on both sides. Invariants hold on the upper side only.
+    rho |v_R| = t K'(R_f)/R on both sides. B_phi has one sign on both sides and balances B_theta, so
+    that the net torque vanishes at every radius. Invariants hold on the upper side only.
     """
     above = np.where(theta > np.pi / 2, np.pi - theta, theta)
     wind = _wind(disc, r, above)
-    own = disc.loss_density(disc.footpoint(r, theta))
-    mirrored = disc.loss_density(disc.footpoint(r, above))
-    up = wind.rotation_and_field_up
-    return _Wind(wind.density * own / mirrored, up, up)
+    foot, mirrored = disc.footpoint(r, theta), disc.footpoint(r, above)
+    mass_ratio = disc.loss_density(foot) / disc.loss_density(mirrored)
+    flux_ratio = disc.radial_flux_density(foot) * foot
+    flux_ratio = flux_ratio / (disc.radial_flux_density(mirrored) * mirrored)
+    v_phi, current = wind.rotation_and_field_up
+    balanced = v_phi, current / flux_ratio
+    return _Wind(wind.density * mass_ratio, balanced, balanced)
 
 
 def _line(
