@@ -115,26 +115,30 @@ def _make_halo_grid(grid: WedgeGrid) -> HaloGrid:
         _with_ghost_edges(grid, axis, array)
         for axis, array in enumerate((grid.r_edges, grid.theta_edges, grid.phi_edges))
     ]
-    inner = edges[0][:, 0]
-    # Radii stay positive: next to the origin the ghost cell is half the way inward.
-    edges[0][:, 0] = np.where(inner > 0, inner, 0.5 * edges[0][:, 1])
+    ghost, first = edges[0][:, 0], edges[0][:, 1]
+    # Radii stay positive: near the origin the ghost cell is half the way inward. Only where the
+    # origin itself is the wall, as theta at the axis, does the ghost lie beyond it.
+    edges[0][:, 0] = np.where((ghost > 0) | (first == 0), ghost, 0.5 * first)
     return HaloGrid(*edges, *(centres(array) for array in edges))
 
 
 def _with_ghost_edges(grid: WedgeGrid, axis: int, edges: Array) -> Array:
     widths = np.diff(edges, axis=1)
-    ghosts = []
+    count, ghosts = edges.shape[1] - 1, []
     for high in (False, True):
-        end, next_to_end = (widths[:, -1], widths[:, -2:][:, 0]) if high else (
-            widths[:, 0],
-            widths[:, :2][:, -1],
-        )
-        ghost = end * np.clip(end / next_to_end, 0.5, 2.0)
+        # The cell at the wall, the one inside it, and the cells of a neighbour that touch it.
+        end, inside, touching = (-1, max(-2, -count), 0) if high else (0, min(1, count - 1), -1)
+        width = widths[:, end] * np.clip(widths[:, end] / widths[:, inside], 0.5, 2.0)
         neighbour = _same_level_neighbours(grid, axis, high)
         known = neighbour >= 0
-        ghost[known] = widths[neighbour[known], 0 if high else -1]
-        ghosts.append(ghost)
-    return np.column_stack([edges[:, 0] - ghosts[0], edges, edges[:, -1] + ghosts[1]])
+        width[known] = widths[neighbour[known], touching]
+        ghost = edges[:, end] + width if high else edges[:, end] - width
+        # The neighbour's own edge, not a sum that rounds: blocks must not show in any bit.
+        # Across the azimuth's seam there is no such edge.
+        beyond = edges[neighbour, 1 if high else -2]
+        direct = known & (edges[neighbour, 0 if high else -1] == edges[:, end])
+        ghosts.append(np.where(direct, beyond, ghost))
+    return np.column_stack([ghosts[0], edges, ghosts[1]])
 
 
 def _same_level_neighbours(grid: WedgeGrid, axis: int, high: bool) -> Array:

@@ -88,6 +88,7 @@ class Snapshot:
     title: str = ""
     units: UnitScales = field(default_factory=UnitScales)
     source: str = ""
+    _made: dict[str, Array] = field(default_factory=dict, init=False, repr=False)
 
     def __post_init__(self) -> None:
         for name in ("time", "mu0", "gm"):
@@ -232,7 +233,9 @@ class Snapshot:
         if name in self.cells:
             return self.cells[name]
         if name in self.faces:
-            return _face_mean(self.faces[name], _FACE_AXIS[name] + 1)
+            if name not in self._made:
+                self._made[name] = _face_mean(self.faces[name], _FACE_AXIS[name] + 1)
+            return self._made[name]
         raise MissingFieldError(missing_sentence(name, dict.fromkeys(self.cell_names)))
 
     def cell_block(self, name: str, block: int) -> Array:

@@ -98,7 +98,7 @@ def demo_disc(
     Returns
     -------
     Snapshot
-        With face-centred and cell-centred magnetic field.
+        With a face-centred magnetic field; cell values of it are made when asked for.
 
     Raises
     ------
@@ -199,7 +199,6 @@ def disc_block(disc: SaltmarshDisc, mesh: DemoMesh, number: int, dtype: np.dtype
         "pressure": np.repeat(state.pressure[None], n_phi, 0),
     }
     cells |= dict(zip(VELOCITY, (m / state.density for m in _to_cells(M)), strict=True))
-    cells |= dict(zip(MAGNETIC, _to_cells(B), strict=True))
     faces = dict(zip(MAGNETIC, B, strict=True))
     return Block(
         r,

@@ -1,0 +1,29 @@
+#!/usr/bin/env bash
+# From a clone to pictures and a verdict. Uses sample_wedge/ only; writes to pictures/.
+set -euo pipefail
+source "$(dirname "${BASH_SOURCE[0]}")/environment.sh"
+ensure_environment standalone
+fieldviz=.venv/bin/fieldviz
+mkdir -p pictures
+
+echo
+echo "== What is in a snapshot =="
+"$fieldviz" inspect sample_wedge/saltmarsh_002.h5
+
+echo
+echo "== Pictures =="
+for theme in dark light; do
+    "$fieldviz" render sample_wedge/saltmarsh_002.h5 --scene flux-sheets --theme "$theme" \
+        -o "pictures/flux-sheets-$theme.png"
+    "$fieldviz" render sample_wedge/saltmarsh_002.h5 --scene azimuth-cut --theme "$theme" \
+        -o "pictures/azimuth-cut-$theme.png"
+done
+"$fieldviz" render sample_wedge/two_levels.h5 --scene flux-sheets -o pictures/two-levels.png
+
+echo
+echo "== Verdict =="
+"$fieldviz" symmetry sample_wedge/saltmarsh_002.h5 | tee pictures/verdict.txt
+
+echo
+echo "Pictures and the verdict lie in $(pwd)/pictures:"
+ls pictures
