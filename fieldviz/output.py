@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 import shutil
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -97,7 +98,9 @@ def _flush_to_disk(path: Path) -> None:
 
 
 def _reason(target: Path, error: OSError) -> str:
-    text = (error.strerror or str(error)).splitlines()[0]
+    # HDF5 wraps the system's own words in many of its own.
+    inner = re.search(r"error message = '([^']+)'", str(error))
+    text = inner[1] if inner else (error.strerror or str(error)).splitlines()[0]
     return (
         f"Cannot write {target}: the file system answered '{text}'; nothing was kept under that "
         "name. Free some space or choose another place."

@@ -22,9 +22,20 @@ def tracked(items: Iterable[T], what: str, total: int) -> Iterator[T]:
         How many there are.
     """
     from rich.console import Console
-    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
+    from rich.progress import (
+        BarColumn,
+        MofNCompleteColumn,
+        Progress,
+        TextColumn,
+        TimeRemainingColumn,
+    )
 
-    columns = (TextColumn("{task.description}"), BarColumn(), MofNCompleteColumn(), TimeRemainingColumn())
+    columns = (
+        TextColumn("{task.description}"),
+        BarColumn(),
+        MofNCompleteColumn(),
+        TimeRemainingColumn(),
+    )
     console = Console(stderr=True)
     with Progress(*columns, console=console, disable=not console.is_terminal) as progress:
         task = progress.add_task(what, total=total)

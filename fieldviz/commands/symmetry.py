@@ -35,7 +35,7 @@ def run(
 
 
 def _text(path: Path, result: Symmetry) -> str:
-    rows = [("pair", "upper", "lower", "score", "angle (degrees)", "word")]
+    rows: list[tuple[str, ...]] = [("pair", "upper", "lower", "score", "angle (degrees)", "word")]
     rows += [_row(pair.name, pair) for pair in result.pairs]
     lines = [result.sentence, "", f"{path.name}, t = {result.time:.6g}", *_aligned(rows), ""]
     lines += ["by radius", *_aligned(_band_rows(result)), ""]
@@ -69,4 +69,6 @@ def _band_rows(result: Symmetry) -> list[tuple[str, ...]]:
 
 def _aligned(rows: list[tuple[str, ...]]) -> list[str]:
     widths = [max(len(row[n]) for row in rows) for n in range(len(rows[0]))]
-    return ["  " + "  ".join(c.ljust(w) for c, w in zip(r, widths, strict=True)).rstrip() for r in rows]
+    return [
+        "  " + "  ".join(c.ljust(w) for c, w in zip(r, widths, strict=True)).rstrip() for r in rows
+    ]

@@ -128,4 +128,3 @@ def _weighted_percentiles(values: Array, weights: Array, shares: tuple[float, ..
     sorted_values, cumulative = values[order], np.cumsum(weights[order])
     middles = (cumulative - 0.5 * weights[order]) / cumulative[-1]
     return [float(v) for v in np.interp(shares, middles, sorted_values)]
-

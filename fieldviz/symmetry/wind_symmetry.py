@@ -113,9 +113,7 @@ def wind_symmetry(
     >>> fv.wind_symmetry(fv.demo_disc(shape=(4, 96, 96), wind="odd")).word
     'odd'
     """
-    snapshot.require(
-        "judge the wind", "density", "velocity_r", "velocity_theta", "velocity_phi"
-    )
+    snapshot.require("judge the wind", "density", "velocity_r", "velocity_theta", "velocity_phi")
     measured = _given_thickness(thickness) or disc_thickness(snapshot)
     cones = matched_cones(snapshot, measured.h, scale_heights)
     band_edges = _band_edges(snapshot, r_range)
@@ -190,9 +188,7 @@ def _cone_pair(
     upper = -cone_integral(snapshot.grid, haloed, cones.upper, band_edges)
     lower = cone_integral(snapshot.grid, haloed, cones.lower, band_edges)
     totals = (float(upper.sum()), float(lower.sum()))
-    return judge_pair(
-        name, totals, (upper, lower), band_edges, scale=scale, unit=unit, notes=notes
-    )
+    return judge_pair(name, totals, (upper, lower), band_edges, scale=scale, unit=unit, notes=notes)
 
 
 def _outflow(

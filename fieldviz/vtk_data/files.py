@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+import shutil
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 
-from vtkmodules.vtkCommonCore import vtkVersion
-from vtkmodules.vtkCommonDataModel import vtkMultiBlockDataSet
+from vtkmodules.vtkCommonCore import vtkLogger, vtkOutputWindow, vtkStringOutputWindow, vtkVersion
+from vtkmodules.vtkCommonDataModel import vtkCompositeDataSet, vtkMultiBlockDataSet
 from vtkmodules.vtkIOXML import vtkXMLMultiBlockDataWriter
 
 from fieldviz.errors import FieldvizError, SnapshotFileError
@@ -35,7 +38,8 @@ def write_vtk(path: str | Path, data: vtkMultiBlockDataSet) -> list[Path]:
     Raises
     ------
     FieldvizError, SnapshotFileError
-        Another suffix, a folder of other data in the way, a VTK that cannot write VTKHDF of this kind, or a failing disk.
+        Another suffix, a folder of other data in the way, a VTK that cannot write VTKHDF of this
+        kind, or a failing disk.
     """
     path = Path(path)
     if path.suffix == ".vtm":
@@ -51,7 +55,7 @@ def write_vtk(path: str | Path, data: vtkMultiBlockDataSet) -> list[Path]:
 def _write_xml(path: Path, data: vtkMultiBlockDataSet) -> list[Path]:
     parts = path.with_suffix("")
     _check_replaceable(parts)
-    with whole_folder(parts) as temporary_parts, whole_file(path) as temporary:
+    with whole_folder(parts) as temporary_parts, whole_file(path) as temporary, _quiet_vtk():
         # The writer puts the pieces into a folder named like the index, so both are written
         # together in the temporary folder and the index is moved out last.
         index = temporary_parts / path.name
@@ -60,7 +64,8 @@ def _write_xml(path: Path, data: vtkMultiBlockDataSet) -> list[Path]:
         writer.SetInputData(data)
         writer.SetDataModeToAppended()
         writer.EncodeAppendedDataOff()
-        if not writer.Write() or writer.GetErrorCode() or not index.exists():
+        done = writer.Write() and not writer.GetErrorCode()
+        if not (done and all(map(_is_whole, temporary_parts.rglob("*.vt?")))):
             raise SnapshotFileError(_failed(path))
         pieces = temporary_parts / path.stem
         for piece in list(pieces.iterdir()):
@@ -68,6 +73,13 @@ def _write_xml(path: Path, data: vtkMultiBlockDataSet) -> list[Path]:
         pieces.rmdir()
         index.replace(temporary)
     return [path, parts]
+
+
+def _is_whole(piece: Path) -> bool:
+    """Whether an XML file has its end: VTK does not notice every write that fails."""
+    with piece.open("rb") as file:
+        file.seek(max(0, piece.stat().st_size - 64))
+        return b"</VTKFile>" in file.read()
 
 
 def _check_replaceable(parts: Path) -> None:
@@ -85,7 +97,13 @@ def _write_vtkhdf(path: Path, data: vtkMultiBlockDataSet) -> list[Path]:
         from vtkmodules.vtkIOHDF import vtkHDFWriter
     except ImportError as error:
         raise FieldvizError(_no_vtkhdf(path)) from error
-    with whole_file(path) as temporary:
+    # HDF5 inside VTK cannot recover from a full disk, so the room is asked for first.
+    if (
+        path.parent.is_dir()
+        and shutil.disk_usage(path.parent).free < 1024 * data.GetActualMemorySize()
+    ):
+        raise SnapshotFileError(_failed(path))
+    with whole_file(path) as temporary, _quiet_vtk():
         writer = vtkHDFWriter()
         writer.SetFileName(str(temporary))
         writer.SetInputData(data)
@@ -106,7 +124,23 @@ def _holds_all_blocks(path: Path, data: vtkMultiBlockDataSet) -> bool:
         reader.SetFileName(str(path))
         reader.Update()
         output = reader.GetOutputDataObject(0)
-    return output is not None and output.GetNumberOfCells() == data.GetNumberOfCells()
+    return (
+        isinstance(output, vtkCompositeDataSet)
+        and output.GetNumberOfCells() == data.GetNumberOfCells()
+    )
+
+
+@contextmanager
+def _quiet_vtk() -> Iterator[None]:
+    """Keep VTK's own error texts off the screen; what failed is said in one line."""
+    shown, verbosity = vtkOutputWindow.GetInstance(), vtkLogger.GetCurrentVerbosityCutoff()
+    vtkLogger.SetStderrVerbosity(vtkLogger.VERBOSITY_OFF)
+    vtkOutputWindow.SetInstance(vtkStringOutputWindow())
+    try:
+        yield
+    finally:
+        vtkOutputWindow.SetInstance(shown)
+        vtkLogger.SetStderrVerbosity(verbosity)
 
 
 def _failed(path: Path) -> str:

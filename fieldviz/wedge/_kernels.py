@@ -28,7 +28,7 @@ def _interval(lines, value):
 
 @njit(cache=True, nogil=True, inline="always")
 def _wrapped(phi, first, period):
-    """phi brought into [first, first + period)."""
+    """Phi brought into [first, first + period)."""
     return first + (phi - first) - period * np.floor((phi - first) / period)
 
 
@@ -125,7 +125,9 @@ def _fill_walls(values, r_c, theta_c, r_low, r_high, theta_low, theta_high, posi
         for i in range(n_r):
             if theta_low:
                 inner = page[2, i] if n_theta > 3 else page[1, i]
-                page[0, i] = _beyond(page[1, i], inner, theta_c[0], theta_c[1], theta_c[2], positive)
+                page[0, i] = _beyond(
+                    page[1, i], inner, theta_c[0], theta_c[1], theta_c[2], positive
+                )
             if theta_high:
                 inner = page[last - 2, i] if n_theta > 3 else page[last - 1, i]
                 page[last, i] = _beyond(

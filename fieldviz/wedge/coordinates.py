@@ -44,7 +44,9 @@ def points_to_spherical(points: Array) -> Array:
     """
     x, y, z = np.moveaxis(_triples("points", points), -1, 0)
     R = np.hypot(x, y)
-    return np.stack([np.hypot(R, z), np.arctan2(R, z), np.mod(np.arctan2(y, x), 2 * np.pi)], axis=-1)
+    return np.stack(
+        [np.hypot(R, z), np.arctan2(R, z), np.mod(np.arctan2(y, x), 2 * np.pi)], axis=-1
+    )
 
 
 def _rotation(points: Array) -> tuple[Array, Array, Array, Array]:

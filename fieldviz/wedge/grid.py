@@ -15,7 +15,7 @@ from fieldviz.wedge.typing import Array, IntArray
 __all__ = ["WedgeGrid"]
 
 _FULL_RING = 2.0 * np.pi
-_ANGLE_TOLERANCE = 1e-6
+_ANGLE_TOLERANCE = 1e-5  # a few roundings of single precision at 2 pi
 
 
 @dataclass(frozen=True, eq=False)
@@ -66,18 +66,17 @@ class WedgeGrid:
                 snapped = np.clip(snapped, 0.0, np.pi)
             snapped.flags.writeable = False
             object.__setattr__(self, f"{name}_edges", snapped)
-        object.__setattr__(self, "level", self._checked_level())
         # Built at once: overlapping or gappy blocks must not get as far as a number.
         object.__setattr__(
             self, "table", build_block_table(self.r_edges, self.theta_edges, self.phi_edges)
         )
+        object.__setattr__(self, "level", self._checked_level())
 
     table: BlockTable = field(init=False, repr=False)
 
     def _checked_level(self) -> IntArray:
         if self.level is None:
-            step = np.log2(np.diff(self.phi_edges).mean(axis=1) * self._theta_step())
-            return np.rint((step.max() - step) / 2.0).astype(np.int64)
+            return self._level_of_cells()
         level = np.asarray(self.level)
         if level.shape != (self.n_blocks,) or not np.issubdtype(level.dtype, np.integer):
             raise GridError(
@@ -86,12 +85,18 @@ class WedgeGrid:
             )
         return level.astype(np.int64)
 
-    def _theta_step(self) -> Array:
-        # A single azimuth cell says nothing of refinement: then theta counts twice.
-        step = np.diff(self.theta_edges).mean(axis=1)
-        if self.phi_edges.shape[1] == 2 and np.ptp(self.phi_edges[:, 1] - self.phi_edges[:, 0]) == 0:
-            return step**2
-        return step
+    def _level_of_cells(self) -> IntArray:
+        """Levels from cell widths, by halves of the widest, where the file does not say."""
+        if self.table.block.size == self.n_blocks:
+            # Every lattice cell is one block: stretched perhaps, but nowhere refined.
+            return np.zeros(self.n_blocks, dtype=np.int64)
+        # Steps in r and theta are often stretched, in azimuth seldom: it is asked first.
+        for edges in (self.phi_edges, self.theta_edges):
+            step = np.log2(np.diff(edges, axis=1).mean(axis=1))
+            level = np.rint(step.max() - step).astype(np.int64)
+            if level.any():
+                break
+        return level
 
     @property
     def n_blocks(self) -> int:
@@ -211,7 +216,8 @@ class WedgeGrid:
         int array
         """
         table = self.table
-        indices, inside = [], np.ones(np.shape(r), dtype=bool)
+        indices, inside = [], np.isfinite(phi)
+        phi = np.where(inside, phi, table.phi[0])
         for lines, values in ((table.r, r), (table.theta, theta), (table.phi, self.wrap(phi))):
             index = np.searchsorted(lines, values, side="right") - 1
             index = np.where(values == lines[-1], len(lines) - 2, index)
@@ -248,7 +254,7 @@ def _check_ranges(edges: dict[str, Array]) -> None:
     if edges["r"].min() < 0:
         raise GridError(
             f"Cannot build the grid: expected radii >= 0, got {edges['r'].min():.6g}; if the file "
-            "stores ln r, say so in a layout description (transform = \"ln\")."
+            'stores ln r, say so in a layout description (transform = "ln").'
         )
     low, high = edges["theta"].min(), edges["theta"].max()
     if low < -_ANGLE_TOLERANCE or high > np.pi + _ANGLE_TOLERANCE:

@@ -162,9 +162,7 @@ def _same_level_neighbours(grid: WedgeGrid, axis: int, high: bool) -> Array:
             beyond %= count
         if not 0 <= beyond < count:
             continue
-        index: list[int | slice] = [
-            slice(starts[n][block], ends[n][block]) for n in (2, 1, 0)
-        ]
+        index: list[int | slice] = [slice(starts[n][block], ends[n][block]) for n in (2, 1, 0)]
         index[2 - axis] = int(beyond)
         across = np.asarray(table.block[tuple(index)])
         same = across[grid.level[across] == grid.level[block]]

@@ -95,7 +95,9 @@ class Snapshot:
             value = getattr(self, name)
             if not np.isfinite(value) or (name != "time" and value <= 0):
                 wanted = "a finite number" if name == "time" else "a positive number"
-                raise FieldvizError(f"Cannot build the snapshot: expected {name} to be {wanted}, got {value}.")
+                raise FieldvizError(
+                    f"Cannot build the snapshot: expected {name} to be {wanted}, got {value}."
+                )
 
     @classmethod
     def from_arrays(
@@ -139,7 +141,9 @@ class Snapshot:
         >>> snapshot.grid.n_cells
         384
         """
-        block = Block(np.asarray(r_edges), np.asarray(theta_edges), np.asarray(phi_edges), cells, faces)
+        block = Block(
+            np.asarray(r_edges), np.asarray(theta_edges), np.asarray(phi_edges), cells, faces
+        )
         return cls.from_blocks([block], **constants)
 
     @classmethod

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import Any, TypeAlias
 
-import numpy as np
 import numpy.typing as npt
 
 __all__ = ["Array", "IntArray"]
 
-Array = npt.NDArray[np.floating[Any]]
-IntArray = npt.NDArray[np.integer[Any]]
+# Shapes and element types are said in docstrings and checked at run time.
+Array: TypeAlias = npt.NDArray[Any]
+IntArray: TypeAlias = npt.NDArray[Any]

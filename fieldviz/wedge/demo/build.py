@@ -123,7 +123,8 @@ def demo_disc(
 def _dtype(precision: str) -> np.dtype:
     if precision not in ("single", "double"):
         raise FieldvizError(
-            f"Cannot make the demo disc: expected precision 'single' or 'double', got '{precision}'."
+            "Cannot make the demo disc: expected precision 'single' or 'double', "
+            f"got '{precision}'."
         )
     return np.dtype(np.float32 if precision == "single" else np.float64)
 
@@ -151,8 +152,10 @@ def make_mesh(
     up, down = disc.theta_reach
     x = np.linspace(-1, 1, n_theta + 1)
     x = (1 - midplane_stretch) * x + midplane_stretch * x**3
-    theta = np.pi / 2 + np.where(x < 0, up, down) * x if up == down else np.linspace(
-        np.pi / 2 - up, np.pi / 2 + down, n_theta + 1
+    theta = (
+        np.pi / 2 + np.where(x < 0, up, down) * x
+        if up == down
+        else np.linspace(np.pi / 2 - up, np.pi / 2 + down, n_theta + 1)
     )
     finest = (np.linspace(0, disc.period, n_phi + 1), theta, np.geomspace(*disc.r_range, n_r + 1))
     size = (shape[0] // blocks[0], shape[1] // blocks[1], shape[2] // blocks[2])
@@ -161,11 +164,17 @@ def make_mesh(
 
 
 def _leaves(
-    disc: SaltmarshDisc, theta: Array, size: tuple[int, int, int], blocks: tuple[int, int, int], levels: int
+    disc: SaltmarshDisc,
+    theta: Array,
+    size: tuple[int, int, int],
+    blocks: tuple[int, int, int],
+    levels: int,
 ) -> Iterator[tuple[int, tuple[int, int, int]]]:
     """Leaf blocks; one is split where it comes near the midplane."""
 
-    def split(level: int, corner: tuple[int, int, int]) -> Iterator[tuple[int, tuple[int, int, int]]]:
+    def split(
+        level: int, corner: tuple[int, int, int]
+    ) -> Iterator[tuple[int, tuple[int, int, int]]]:
         span = [n * 2 ** (levels - 1 - level) for n in size]
         edges = theta[[corner[1], corner[1] + span[1]]] - np.pi / 2
         reach = _FINE_REACH * disc.thickness / 2**level
@@ -175,7 +184,8 @@ def _leaves(
         for k, j, i in np.ndindex(2, 2, 2):
             half = [n // 2 for n in span]
             yield from split(
-                level + 1, (corner[0] + k * half[0], corner[1] + j * half[1], corner[2] + i * half[2])
+                level + 1,
+                (corner[0] + k * half[0], corner[1] + j * half[1], corner[2] + i * half[2]),
             )
 
     for k, j, i in np.ndindex(*blocks):
@@ -189,7 +199,9 @@ def disc_block(disc: SaltmarshDisc, mesh: DemoMesh, number: int, dtype: np.dtype
     fine = mesh.finest_edges(number)
     edges: Triple = (fine[0][::step], fine[1][::step], fine[2][::step])
     phi, theta, r = edges
-    areas = tuple(f(r, theta, phi) for f in (geometry.area_r, geometry.area_theta, geometry.area_phi))
+    areas = tuple(
+        f(r, theta, phi) for f in (geometry.area_r, geometry.area_theta, geometry.area_phi)
+    )
     state = disc_state(disc, centres(r), centres(theta)[:, None])
     B = _divided(_magnetic_fluxes(disc, fine, step, areas, state.magnetic_phi), areas)
     M = _divided(_mass_fluxes(disc, fine, step, areas, state.density * state.velocity_phi), areas)
@@ -260,7 +272,8 @@ def _magnetic_fluxes(
     fluxes = _circulation(_summed(sign * psi * np.diff(phi)[:, None, None], step, 0), 0.0, 0.0)
     fluxes = (fluxes[0], fluxes[1], fluxes[2] + B_phi * areas[2])
     if disc.magnetic_turbulence:
-        fluxes = _added(fluxes, _fluctuating_fluxes(disc, 0, fine, step), disc.magnetic_turbulence)
+        strength = sign * disc.magnetic_turbulence
+        fluxes = _added(fluxes, _fluctuating_fluxes(disc, 0, fine, step), strength)
     return fluxes
 
 
@@ -336,7 +349,9 @@ def _unit_scale(disc: SaltmarshDisc, stream: int) -> float:
     """Factor that makes the rms within 2 H equal 1 on a fixed reference mesh."""
     mesh = make_mesh(disc, (32, 96, 96), 1, None, 0.0)
     phi, theta, r = mesh.finest
-    areas = tuple(f(r, theta, phi) for f in (geometry.area_r, geometry.area_theta, geometry.area_phi))
+    areas = tuple(
+        f(r, theta, phi) for f in (geometry.area_r, geometry.area_theta, geometry.area_phi)
+    )
     cells = _to_cells(_divided(_raw_fluxes(disc, stream, mesh.finest, 1), areas))
     near = np.abs(np.cos(centres(theta))) < 2 * disc.thickness
     r_c = centres(r)

@@ -87,7 +87,8 @@ class SaltmarshDisc:
         Plasma beta of the background net vertical field.
     magnetic_turbulence, velocity_turbulence : float
         rms of random solenoidal fluctuations near the midplane, in units of the background B_z
-        and of the sound speed. Their azimuthal mean is zero.
+        and of the sound speed. Their azimuthal mean is zero on meshes of five azimuth cells or more;
+        fewer cannot hold the waves.
     sheet_wander : float
         Amplitude in R by which sheets bend with azimuth.
     field_noise : float
@@ -157,7 +158,7 @@ class SaltmarshDisc:
 
     @property
     def field_slope(self) -> float:
-        """b in B_z ~ R^-b of the background."""
+        """B in B_z ~ R^-b of the background."""
         return (self.density_slope + 1) / 2
 
     @property
@@ -203,7 +204,9 @@ class SaltmarshDisc:
         radii = list(_FIXED_SHEETS)
         for middle, distance in ((_MERGING_AT, merging), (_SPLITTING_AT, splitting)):
             width = _SHEET_WIDTH * self.thickness * middle
-            radii += [middle] if distance <= 2 * width else self._pair_peaks(middle, distance, width)
+            radii += (
+                [middle] if distance <= 2 * width else self._pair_peaks(middle, distance, width)
+            )
         return sorted(radii)
 
     @staticmethod

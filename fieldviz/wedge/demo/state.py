@@ -51,7 +51,9 @@ def disc_state(disc: SaltmarshDisc, r: Array, theta: Array) -> DiscState:
     v_down, I_down = wind.rotation_and_field_down
     balance = np.maximum(1 / r + h2 / R * (-disc.density_slope - 1 + gap_slope), 0.01 / r)
     v_phi = np.sqrt(balance) * (1 - share) + np.where(cosine > 0, v_up, v_down) * share
-    mix = smooth_step((cosine - _reversal(disc, r) + disc.reversal_width) / (2 * disc.reversal_width))
+    mix = smooth_step(
+        (cosine - _reversal(disc, r) + disc.reversal_width) / (2 * disc.reversal_width)
+    )
     B_phi = (I_up * mix + I_down * (1 - mix)) / R
     if disc.reversed_field:
         B_phi = -B_phi
