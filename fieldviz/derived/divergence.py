@@ -94,7 +94,8 @@ def _face_part(snapshot: Snapshot) -> dict[str, Any]:
     for block in range(snapshot.grid.n_blocks):
         b_r, b_theta, b_phi = (snapshot.faces.block(name, block) for name in MAGNETIC)
         precision = min(precision, *(values.dtype.itemsize for values in (b_r, b_theta, b_phi)))
-        ratio, bad = _face_ratio(snapshot.grid, block, b_r, b_theta, b_phi)
+        with np.errstate(all="ignore"):  # Damaged values are counted, not complained of.
+            ratio, bad = _face_ratio(snapshot.grid, block, b_r, b_theta, b_phi)
         skipped += bad
         largest = float(ratio.max())
         if largest > worst:
@@ -121,8 +122,7 @@ def _face_ratio(
         size += np.abs(high) + np.abs(low)
     usable = np.isfinite(size)
     bad = int(size.size - np.count_nonzero(usable))
-    with np.errstate(invalid="ignore"):
-        ratio = np.where(usable & (size > 0), np.abs(total) / np.where(size > 0, size, 1.0), 0.0)
+    ratio = np.where(usable & (size > 0), np.abs(total) / np.where(size > 0, size, 1.0), 0.0)
     return ratio, bad
 
 
@@ -136,7 +136,8 @@ def _cell_part(snapshot: Snapshot) -> dict[str, Any]:
     squares, count, skipped, worst, worst_block = 0.0, 0, 0, 0.0, None
     for block in range(snapshot.grid.n_blocks):
         components = [snapshot.cell_block(name, block).astype(np.float64) for name in MAGNETIC]
-        ratio, bad = _cell_ratio(snapshot.grid, block, components)
+        with np.errstate(all="ignore"):
+            ratio, bad = _cell_ratio(snapshot.grid, block, components)
         skipped += bad
         if not ratio.size:
             continue

@@ -81,7 +81,8 @@ class WedgeGrid:
         if level.shape != (self.n_blocks,) or not np.issubdtype(level.dtype, np.integer):
             raise GridError(
                 f"Cannot build the grid: expected {self.n_blocks} whole-number levels, "
-                f"got an array of shape {level.shape} and type {level.dtype}."
+                f"got an array of shape {level.shape} and type {level.dtype}; "
+            "leave them out and they are worked out."
             )
         return level.astype(np.int64)
 
@@ -231,7 +232,7 @@ def _checked_edges(name: str, edges: Array) -> Array:
     if array.ndim != 2 or array.shape[1] < 2 or not len(array):
         raise GridError(
             f"Cannot build the grid: expected {name}_edges of shape (n_blocks, n + 1), "
-            f"got shape {np.shape(edges)}."
+            f"got shape {np.shape(edges)}; check how the edges were made."
         )
     bad = np.count_nonzero(~np.isfinite(array))
     if bad:

@@ -39,16 +39,16 @@ class Block:
     level: int = 0
 
 
-def face_shape(name: str, block_shape: tuple[int, int, int]) -> tuple[int, ...]:
+def face_shape(name: str, block_shape: tuple[int, int, int]) -> tuple[int, int, int]:
     """Shape (n_phi, n_theta, n_r) of a face-centred field: one more along its own axis."""
     if name not in _FACE_AXIS:
         raise FieldvizError(
             f"Cannot use the face-centred field '{name}': expected one of "
-            f"{', '.join(_FACE_AXIS)}; give other fields as cell values."
+            f"{', '.join(_FACE_AXIS)}, got another name; give other fields as cell values."
         )
     shape = list(block_shape)
     shape[_FACE_AXIS[name]] += 1
-    return tuple(shape)
+    return shape[0], shape[1], shape[2]
 
 
 @dataclass(frozen=True, eq=False)

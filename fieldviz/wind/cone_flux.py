@@ -35,7 +35,9 @@ def cone_integral(grid: WedgeGrid, haloed: Array, theta: float, band_edges: Arra
     total = np.zeros(len(band_edges) - 1)
     edges = grid.theta_edges
     last = grid.theta_range[1]
-    crossed = (edges[:, 0] <= theta) & ((theta < edges[:, -1]) | (theta == last == edges[:, -1]))
+    crossed = (edges[:, 0] <= theta) & (
+        (theta < edges[:, -1]) | ((theta == last) & (last == edges[:, -1]))
+    )
     for block in np.flatnonzero(crossed):
         centres = around.theta[block]
         j = int(np.clip(np.searchsorted(centres, theta) - 1, 0, len(centres) - 2))

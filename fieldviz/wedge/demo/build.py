@@ -313,14 +313,15 @@ def _raw_fluxes(disc: SaltmarshDisc, stream: int, fine: Triple, step: int) -> Tr
     # The last azimuth is the first one again, to the bit.
     turn = np.where(np.isclose(edges[0], disc.period, rtol=1e-13, atol=0), 0.0, edges[0])
 
-    def integral(component: int, phi: Array, theta: Array, r: Array) -> Array:
-        value = modes.potential(component, phi, theta, r) * envelope(disc, theta[:, None], r)
+    def integral(component: int, phi: Array, theta: Array, r: Array, width: float = 0.0) -> Array:
+        value = modes.potential(component, phi, theta, r, width) * envelope(disc, theta[:, None], r)
         return np.asarray(value)
 
     along_r = integral(0, turn, edges[1], middles[2]) * np.diff(fine[2])
     along_theta = integral(1, turn, middles[1], edges[2]) * edges[2] * np.diff(fine[1])[:, None]
     R = edges[2] * np.sin(edges[1])[:, None]
-    along_phi = integral(2, middles[0], edges[1], edges[2]) * R * np.diff(fine[0])[:, None, None]
+    steps = np.diff(fine[0])[:, None, None]
+    along_phi = integral(2, middles[0], edges[1], edges[2], float(steps.mean())) * R * steps
     return _circulation(
         _summed(along_phi, step, 0), _summed(along_theta, step, 1), _summed(along_r, step, 2)
     )

@@ -29,14 +29,22 @@ class Modes:
     phase: Array
     amplitude: Array
 
-    def potential(self, component: int, phi: Array, theta: Array, r: Array) -> Array:
-        """One component without its envelope, (len(phi), len(theta), len(r))."""
+    def potential(
+        self, component: int, phi: Array, theta: Array, r: Array, phi_width: float = 0.0
+    ) -> Array:
+        """One component without its envelope, (len(phi), len(theta), len(r)).
+
+        With `phi_width` it is the exact mean over that width of azimuth: few azimuth cells then
+        bring no mean field about by aliasing.
+        """
         angle = (
             self.radial[:, None, None] * np.log(r)
             + self.polar[:, None, None] * theta[:, None]
             + self.phase[:, None, None]
         )
-        weight = self.amplitude[component][:, None]
+        # sin(x)/x of half the phase that a cell spans.
+        damping = np.sinc(self.azimuthal * phi_width / (2 * np.pi))
+        weight = (self.amplitude[component] * damping)[:, None]
         turn = self.azimuthal[:, None] * phi
         even = np.tensordot((weight * np.cos(turn)).T, np.cos(angle), axes=1)
         return even - np.tensordot((weight * np.sin(turn)).T, np.sin(angle), axes=1)
