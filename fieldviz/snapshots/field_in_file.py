@@ -7,6 +7,7 @@ axis is which, what is turned round, what it is multiplied with.
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -14,13 +15,14 @@ from typing import Any
 import h5py
 import numpy as np
 
-from fieldviz.errors import MissingFieldError
+from fieldviz.errors import FieldvizError, MissingFieldError, SnapshotFileError
 from fieldviz.snapshots.hdf5_access import check_fits_memory, open_hdf5, safe_dataset
 from fieldviz.wedge.fields import Fields, missing_sentence, usable_dtype
 from fieldviz.wedge.typing import Array
 
 __all__ = ["BlockPiece", "FieldInFile", "FileFields"]
 
+_MANY_VALUES = 1e7
 Selection = tuple[int | slice, ...]
 
 
@@ -80,8 +82,15 @@ class FieldInFile:
     def read_block(self, file: h5py.File, block: int) -> Array:
         """One block, (n_phi, n_theta, n_r), in native byte order."""
         piece = self.pieces[block]
-        dataset = safe_dataset(file, piece.dataset)
-        return self._as_model(dataset.astype(self.dtype)[piece.selection])
+        n_values = float(np.prod(self.shape, dtype=float))
+        if n_values > _MANY_VALUES:
+            check_fits_memory(f"'{piece.dataset}'", n_values, self.dtype.itemsize)
+        return self._as_model(self._selected(safe_dataset(file, piece.dataset), piece.selection))
+
+    def _selected(self, dataset: h5py.Dataset, selection: Selection) -> Array:
+        if self.stored.kind == "b":  # HDF5 converts no truth values.
+            return np.asarray(dataset[selection], dtype=self.dtype)
+        return np.asarray(dataset.astype(self.dtype)[selection])
 
     def read(self, file: h5py.File) -> Array:
         """All blocks, (n_blocks, n_phi, n_theta, n_r)."""
@@ -125,7 +134,7 @@ class FileFields(Fields):
             plan = self._plan(name)
             n_values = float(len(plan.pieces)) * float(np.prod(plan.shape, dtype=float))
             check_fits_memory(f"'{name}' of {self._path}", n_values, plan.dtype.itemsize)
-            with open_hdf5(self._path) as file:
+            with self._reading(name) as file:
                 self._kept[name] = plan.read(file)
         return self._kept[name]
 
@@ -134,8 +143,23 @@ class FileFields(Fields):
         if name in self._kept:
             return self._kept[name][block]
         plan = self._plan(name)
-        with open_hdf5(self._path) as file:
+        with self._reading(name) as file:
             return plan.read_block(file, block)
+
+    @contextmanager
+    def _reading(self, name: str) -> Iterator[h5py.File]:
+        with open_hdf5(self._path) as file:
+            try:
+                yield file
+            except FieldvizError:
+                raise
+            except (TypeError, ValueError, IndexError) as error:
+                # The plan fitted when it was made.
+                raise SnapshotFileError(
+                    f"Cannot read '{name}' of {self._path}: expected the dataset that was there "
+                    "before, got another shape or type, so the file has changed since it was "
+                    "opened; open it again."
+                ) from error
 
     def _plan(self, name: str) -> FieldInFile:
         if name not in self._plans:
@@ -145,6 +169,11 @@ class FileFields(Fields):
     def stored_dtype(self, name: str) -> np.dtype:
         """Type in which the file holds a field."""
         return self._plan(name).stored
+
+    def origin(self, name: str) -> tuple[str, float]:
+        """Dataset a field comes from (of its first block), and the factor applied to it."""
+        plan = self._plan(name)
+        return plan.pieces[0].dataset, plan.factor
 
     def __iter__(self) -> Iterator[str]:
         return iter(self._plans)

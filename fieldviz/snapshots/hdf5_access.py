@@ -14,11 +14,14 @@ from pathlib import Path
 import h5py
 import numpy as np
 
-from fieldviz.errors import SnapshotFileError
+from fieldviz.errors import FieldvizError, SnapshotFileError
 
 __all__ = ["check_fits_memory", "open_hdf5", "safe_dataset", "safe_member", "text"]
 
 _SHARE_OF_MEMORY = 0.9
+_MOST_LINKS = 16  # one behind the other; more are a circle
+# What h5py raises on damaged bytes: a broken type, for one, is a ValueError.
+_DAMAGE = (OSError, RuntimeError, ValueError, TypeError, KeyError, OverflowError)
 
 
 @contextmanager
@@ -43,9 +46,9 @@ def open_hdf5(path: str | Path) -> Iterator[h5py.File]:
     try:
         with h5py.File(path, "r") as file:
             yield file
-    except SnapshotFileError:
+    except FieldvizError:
         raise
-    except (OSError, RuntimeError) as error:
+    except _DAMAGE as error:
         raise SnapshotFileError(_reason(path, error)) from error
 
 
@@ -78,8 +81,14 @@ def _reason(path: Path, error: Exception) -> str:
 
 def safe_member(file: h5py.Group, path: str) -> h5py.Group | h5py.Dataset | None:
     """A group or dataset inside `file`, or None; links to other files are refused."""
-    here: h5py.Group | h5py.Dataset = file
-    for part in path.strip("/").split("/"):
+    return _member(file, path, 0)
+
+
+def _member(file: h5py.Group, path: str, links: int) -> h5py.Group | h5py.Dataset | None:
+    here: h5py.Group | h5py.Dataset | None = file
+    for part in path.split("/"):
+        if part in ("", "."):
+            continue
         if not isinstance(here, h5py.Group):
             return None
         link = here.get(part, getlink=True)
@@ -90,6 +99,16 @@ def safe_member(file: h5py.Group, path: str) -> h5py.Group | h5py.Dataset | None
                 f"Cannot read {file.file.filename}: expected all data inside the file, got "
                 f"'{path}' linked to another file ({link.filename}); copy the data into one file."
             )
+        if isinstance(link, h5py.SoftLink):
+            # Followed here and not by HDF5, as its target may lie behind an external link.
+            if links >= _MOST_LINKS:
+                raise SnapshotFileError(
+                    f"Cannot read {file.file.filename}: expected '{path}' to lead to data, got "
+                    "links that lead in a circle; mend them in the file."
+                )
+            start = here.file if link.path.startswith("/") else here
+            here = _member(start, link.path, links + 1)
+            continue
         try:
             here = here[part]
         except KeyError:
@@ -117,15 +136,26 @@ def safe_dataset(file: h5py.Group, path: str) -> h5py.Dataset:
             f"Cannot read {name}: expected '{path}' to be a dataset, got a group; "
             "`fieldviz inspect` lists what the file has."
         )
-    outside = list(found.external or [])
-    if found.is_virtual:
-        outside += [source for source in found.virtual_sources() if source.file_name != "."]
-    if outside:
+    if _keeps_data_elsewhere(found, 0):
         raise SnapshotFileError(
             f"Cannot read {name}: expected all data inside the file, got '{path}' stored in other "
             "files; copy the data into one file."
         )
     return found
+
+
+def _keeps_data_elsewhere(dataset: h5py.Dataset, depth: int) -> bool:
+    if dataset.external or depth >= _MOST_LINKS:
+        return True
+    if not dataset.is_virtual:
+        return False
+    for source in dataset.virtual_sources():
+        if source.file_name != ".":
+            return True
+        inside = _member(dataset.file, source.dset_name, 0)
+        if isinstance(inside, h5py.Dataset) and _keeps_data_elsewhere(inside, depth + 1):
+            return True
+    return False
 
 
 def check_fits_memory(what: str, n_values: float, item_size: int) -> None:
@@ -169,6 +199,8 @@ def _free_memory() -> float:
 
 def text(value: object) -> str:
     """A string attribute or dataset value as text; undecodable bytes are shown, not lost."""
+    if isinstance(value, h5py.Empty):
+        return ""
     if isinstance(value, np.ndarray) and value.size == 1:
         value = value.flat[0]
     if isinstance(value, bytes):

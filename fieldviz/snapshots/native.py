@@ -12,7 +12,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from pathlib import Path
 
 import h5py
@@ -60,24 +61,31 @@ def open_native(file: h5py.File, path: Path, fields: Sequence[str] | None) -> Sn
             "update fieldviz."
         )
     edges = [_edges(file, path, name) for name in ("r", "theta", "phi")]
-    grid = _with_path(path, edges[0], edges[1], edges[2], _level(file))
+    # Edges that disagree are the grid's to complain of, before levels can disagree with them.
+    agree = len({len(axis) for axis in edges}) == 1
+    level = _level(file, path, len(edges[0])) if agree else None
+    with _naming(path):
+        grid = WedgeGrid(edges[0], edges[1], edges[2], level)
     cell_plans = _plans(file, path, grid, "cells")
     face_plans = _plans(file, path, grid, "faces")
     if fields is not None:
         cell_plans, face_plans = _chosen(cell_plans, face_plans, fields)
     gamma = read_number(file, "gamma", path) if "gamma" in file.attrs else None
-    return Snapshot(
-        grid,
-        FileFields(path, cell_plans),
-        FileFields(path, face_plans),
-        time=read_number(file, "time", path),
-        mu0=read_number(file, "mu0", path),
-        gm=read_number(file, "gm", path),
-        gamma=gamma,
-        title=text(file.attrs.get("title", "")),
-        units=_units(file, path),
-        source=str(path),
-    )
+    time, mu0, gm = (read_number(file, name, path) for name in ("time", "mu0", "gm"))
+    units = _units(file, path)
+    with _naming(path):
+        return Snapshot(
+            grid,
+            FileFields(path, cell_plans),
+            FileFields(path, face_plans),
+            time=time,
+            mu0=mu0,
+            gm=gm,
+            gamma=gamma,
+            title=text(file.attrs.get("title", "")),
+            units=units,
+            source=str(path),
+        )
 
 
 def read_number(file: h5py.File, name: str, path: Path) -> float:
@@ -89,7 +97,8 @@ def read_number(file: h5py.File, name: str, path: Path) -> float:
         )
     value = file.attrs[name]
     try:
-        number = float(np.asarray(value).reshape(-1)[0]) if np.size(value) == 1 else np.nan
+        single = np.size(value) == 1 and not np.iscomplexobj(value)
+        number = float(np.asarray(value).reshape(-1)[0]) if single else np.nan
     except (TypeError, ValueError):
         number = np.nan
     if not np.isfinite(number):
@@ -105,36 +114,50 @@ def _edges(file: h5py.File, path: Path, name: str) -> Array:
     if dataset.ndim != 2 or dataset.dtype.kind not in "fiu":
         raise SnapshotFileError(
             f"Cannot read {path}: expected grid/{name}_edges to be numbers of shape "
-            f"(n_blocks, n + 1), got shape {dataset.shape} of type {dataset.dtype}."
+            f"(n_blocks, n + 1), got shape {dataset.shape} of type {dataset.dtype}; "
+            "check how the file was written."
         )
     check_fits_memory(f"grid/{name}_edges of {path}", np.prod(dataset.shape, dtype=float), 8)
     return np.asarray(dataset[...], dtype=np.float64)
 
 
-def _level(file: h5py.File) -> Array | None:
+def _level(file: h5py.File, path: Path, n_blocks: int) -> Array | None:
     if safe_member(file, "grid/level") is None:
         return None
-    return np.asarray(safe_dataset(file, "grid/level")[...])
+    dataset = safe_dataset(file, "grid/level")
+    # Looked at before it is read: an absurd size must not take memory.
+    if dataset.shape != (n_blocks,) or dataset.dtype.kind not in "iu":
+        raise SnapshotFileError(
+            f"Cannot read {path}: expected grid/level to be {n_blocks} whole numbers, got shape "
+            f"{dataset.shape} of type {dataset.dtype}; mend it, or remove it and the levels are "
+            "worked out."
+        )
+    return np.asarray(dataset[...])
 
 
-def _with_path(path: Path, r: Array, theta: Array, phi: Array, level: Array | None) -> WedgeGrid:
+@contextmanager
+def _naming(path: Path, where: str = "") -> Iterator[None]:
+    """Put the file's name before what the model says of its content."""
     try:
-        return WedgeGrid(r, theta, phi, level)
+        yield
     except FieldvizError as error:
-        raise type(error)(f"In {path}: {error}") from error
+        place = f"In '{where}' of {path}" if where else f"In {path}"
+        raise type(error)(f"{place}: {error}") from error
 
 
 def _plans(file: h5py.File, path: Path, grid: WedgeGrid, kind: str) -> dict[str, FieldInFile]:
     group = safe_member(file, kind)
     if group is None:
         return {}
+    if not isinstance(group, h5py.Group):
+        raise SnapshotFileError(
+            f"Cannot read {path}: expected '{kind}' to be a group of datasets, got one dataset; "
+            "check how the file was written."
+        )
     plans = {}
     for name in group:
-        if kind == "cells":
-            shape = grid.block_shape
-        else:
-            n_phi, n_theta, n_r = face_shape(name, grid.block_shape)
-            shape = (n_phi, n_theta, n_r)
+        with _naming(path):
+            shape = grid.block_shape if kind == "cells" else face_shape(name, grid.block_shape)
         where = f"{kind}/{name}"
         dataset = safe_dataset(file, where)
         expected = (grid.n_blocks, *shape)
@@ -143,7 +166,8 @@ def _plans(file: h5py.File, path: Path, grid: WedgeGrid, kind: str) -> dict[str,
                 f"Cannot read {path}: expected '{where}' of shape {expected} "
                 f"(block, phi, theta, r), got {dataset.shape}; grid and fields disagree."
             )
-        usable_dtype(dataset.dtype)
+        with _naming(path, where):
+            usable_dtype(dataset.dtype)
         pieces = tuple(
             BlockPiece(where, (block, slice(None), slice(None), slice(None)))
             for block in range(grid.n_blocks)
@@ -170,5 +194,6 @@ def _units(file: h5py.File, path: Path) -> UnitScales:
         if f"{name}_unit" in file.attrs:
             value = read_number(file, f"{name}_unit", path)
             label = text(file.attrs.get(f"{name}_unit_label", f"{name} unit"))
-            scales[name] = Unit(value, label)
+            with _naming(path, f"{name}_unit"):
+                scales[name] = Unit(value, label)
     return UnitScales(**scales)

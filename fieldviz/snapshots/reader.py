@@ -4,11 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from fieldviz.errors import SnapshotFileError
 from fieldviz.snapshots.hdf5_access import open_hdf5
 from fieldviz.snapshots.native import is_native, open_native
 from fieldviz.wedge.snapshot import Snapshot
+
+if TYPE_CHECKING:
+    from fieldviz.snapshots.layout_description import LayoutDescription
 
 __all__ = ["read_snapshot"]
 
@@ -17,7 +21,7 @@ def read_snapshot(
     path: str | Path,
     *,
     fields: Sequence[str] | None = None,
-    layout: str | Path | None = None,
+    layout: str | Path | LayoutDescription | None = None,
 ) -> Snapshot:
     """Open a snapshot; its fields are read when they are first used.
 
@@ -27,7 +31,7 @@ def read_snapshot(
         An HDF5 file.
     fields : sequence of str, optional
         Only these fields; all by default.
-    layout : str or Path, optional
+    layout : str, Path or LayoutDescription, optional
         Layout description (TOML) of a file that fieldviz did not write.
 
     Returns

@@ -5,10 +5,14 @@ from __future__ import annotations
 import glob
 from collections.abc import Iterable, Iterator, Sequence
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from fieldviz.errors import SnapshotFileError
 from fieldviz.snapshots.reader import read_snapshot
 from fieldviz.wedge.snapshot import Snapshot
+
+if TYPE_CHECKING:
+    from fieldviz.snapshots.layout_description import LayoutDescription
 
 __all__ = ["SnapshotSeries", "read_series"]
 
@@ -31,7 +35,7 @@ class SnapshotSeries(Sequence[Snapshot]):
         paths: Sequence[Path],
         times: Sequence[float],
         *,
-        layout: str | Path | None = None,
+        layout: str | Path | LayoutDescription | None = None,
         dropped: Sequence[Path] = (),
     ) -> None:
         self.paths = tuple(paths)
@@ -42,7 +46,7 @@ class SnapshotSeries(Sequence[Snapshot]):
     def __len__(self) -> int:
         return len(self.paths)
 
-    def __getitem__(self, index):  # type: ignore[no-untyped-def]  # noqa: ANN001, ANN204
+    def __getitem__(self, index):  # type: ignore[no-untyped-def]
         if isinstance(index, slice):
             return SnapshotSeries(self.paths[index], self.times[index], layout=self._layout)
         return read_snapshot(self.paths[index], layout=self._layout)
@@ -51,11 +55,14 @@ class SnapshotSeries(Sequence[Snapshot]):
         return (self[index] for index in range(len(self)))
 
     def __repr__(self) -> str:
-        return f"SnapshotSeries({len(self)} snapshots, t = {self.times[0]:.6g} to {self.times[-1]:.6g})"
+        span = f", t = {self.times[0]:.6g} to {self.times[-1]:.6g}" if self.times else ""
+        return f"SnapshotSeries({len(self)} snapshots{span})"
 
 
 def read_series(
-    paths_or_pattern: str | Path | Iterable[str | Path], *, layout: str | Path | None = None
+    paths_or_pattern: str | Path | Iterable[str | Path],
+    *,
+    layout: str | Path | LayoutDescription | None = None,
 ) -> SnapshotSeries:
     """Open a series; no field is read.
 
@@ -63,7 +70,7 @@ def read_series(
     ----------
     paths_or_pattern : str, Path or iterable of them
         One pattern such as "run/disc_*.h5", or file names in any order.
-    layout : str or Path, optional
+    layout : str, Path or LayoutDescription, optional
         Layout description for files that fieldviz did not write.
 
     Returns
@@ -94,7 +101,7 @@ def read_series(
 def _expanded(paths_or_pattern: str | Path | Iterable[str | Path]) -> list[Path]:
     if isinstance(paths_or_pattern, str | Path):
         pattern = str(paths_or_pattern)
-        found = sorted({Path(name) for name in glob.glob(pattern)}) or (
+        found = sorted({Path(name) for name in glob.glob(pattern)}) or (  # noqa: PTH207 - may be absolute
             [Path(pattern)] if Path(pattern).exists() else []
         )
         if not found:

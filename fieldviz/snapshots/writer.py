@@ -7,7 +7,9 @@ from pathlib import Path
 import h5py
 import numpy as np
 
+from fieldviz.errors import SnapshotFileError
 from fieldviz.output import whole_file
+from fieldviz.snapshots.hdf5_sink import new_hdf5
 from fieldviz.snapshots.native import LAYOUT_MARK, LAYOUT_VERSION
 from fieldviz.wedge.fields import Fields
 from fieldviz.wedge.snapshot import Snapshot
@@ -37,13 +39,24 @@ def write_snapshot(path: str | Path, snapshot: Snapshot, *, compress: bool = Fal
     >>> disc = fv.demo_disc(shape=(4, 32, 24))
     >>> fv.write_snapshot("disc.h5", disc)  # doctest: +SKIP
     """
-    with whole_file(path) as temporary, h5py.File(temporary, "w") as file:
+    _check_names(path, snapshot)
+    with whole_file(path) as temporary, new_hdf5(temporary) as (file, sink):
         _write_attributes(file, snapshot)
         for name in ("r_edges", "theta_edges", "phi_edges", "level"):
             file[f"grid/{name}"] = getattr(snapshot.grid, name)
         for kind, fields in (("cells", snapshot.cells), ("faces", snapshot.faces)):
             for name in fields:
                 _write_field(file, f"{kind}/{name}", fields, name, snapshot.grid.n_blocks, compress)
+                sink.check()
+
+
+def _check_names(path: str | Path, snapshot: Snapshot) -> None:
+    for name in (*snapshot.cells, *snapshot.faces):
+        if name in ("", ".") or "/" in name or "\0" in name:
+            raise SnapshotFileError(
+                f"Cannot write {path}: expected a field name without '/' and NUL, got {name!r}; "
+                "rename the field."
+            )
 
 
 def _write_attributes(file: h5py.File, snapshot: Snapshot) -> None:
@@ -53,12 +66,18 @@ def _write_attributes(file: h5py.File, snapshot: Snapshot) -> None:
     if snapshot.gamma is not None:
         file.attrs["gamma"] = float(snapshot.gamma)
     if snapshot.title:
-        file.attrs["title"] = snapshot.title
+        file.attrs["title"] = _stored(snapshot.title)
     for name in ("length", "mass", "time"):
         unit = getattr(snapshot.units, name)
         if unit is not None:
             file.attrs[f"{name}_unit"] = unit.value
-            file.attrs[f"{name}_unit_label"] = unit.label
+            file.attrs[f"{name}_unit_label"] = _stored(unit.label)
+
+
+def _stored(words: str) -> np.bytes_ | h5py.Empty:
+    # Of fixed length: words of variable length lie in a heap, and the HDF5 library can search a
+    # damaged heap for ever.
+    return np.bytes_(words.encode()) if words else h5py.Empty("S1")
 
 
 def _write_field(
