@@ -34,9 +34,9 @@ _FIELD_FILLERS = {
     "component", "field", "fields", "fluid", "side", "staggered",
 }  # fmt: skip
 _DENSITY = {"rho", "dens", "density"}
-_PRESSURE = {"press", "pressure", "prs", "pres", "pgas", "prsr"}
+_PRESSURE = {"press", "pressure", "prs", "pres"}
 _VELOCITY = {"v", "vel", "velo", "velocity", "u"}
-_MAGNETIC = {"b", "bcc", "bc", "bf", "bs", "bfield", "mag", "magn", "magnetic"}
+_MAGNETIC = {"b", "bfield", "mag", "magn", "magnetic"}
 _DIFFUSIVITY = {"eta", "diffusivity", "resistivity", "diff"}
 _AMBIPOLAR = {"a", "ad", "am", "ambi", "ambipolar"}
 _OHMIC = {"o", "oh", "ohm", "ohmic"}

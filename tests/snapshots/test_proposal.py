@@ -305,7 +305,7 @@ def test_words_for_coordinates(name, axis, kind):
         ("gasDensity", "density"),
         ("velocity_x1", "velocity_r"),
         ("vphi", "velocity_phi"),
-        ("Bcc2", "magnetic_theta"),
+        ("mag_2", "magnetic_theta"),
         ("b_field_r", "magnetic_r"),
         ("eta_ambipolar", "diffusivity_ambipolar"),
         ("resistivity", "diffusivity_ohmic"),
