@@ -45,7 +45,7 @@ _HOMES = {
     "write_snapshot": "fieldviz.snapshots.writer",
 }
 
-__all__ = ["__version__", *_HOMES]  # noqa: PLE0604
+__all__ = ["__version__", *_HOMES]
 
 
 def __getattr__(name: str) -> object:

@@ -75,8 +75,8 @@ def whole_folder(path: str | Path) -> Iterator[Path]:
     _check_target(target, folder_wanted=True)
     temporary = target.with_name(f".{target.name}.{os.getpid()}.partial")
     shutil.rmtree(temporary, ignore_errors=True)
-    temporary.mkdir()
     try:
+        temporary.mkdir()
         yield temporary
         if target.is_dir():
             shutil.rmtree(target)
@@ -100,7 +100,7 @@ def _flush_to_disk(path: Path) -> None:
 def _reason(target: Path, error: OSError) -> str:
     # HDF5 wraps the system's own words in many of its own.
     inner = re.search(r"error message = '([^']+)'", str(error))
-    text = inner[1] if inner else (error.strerror or str(error)).splitlines()[0]
+    text = inner[1] if inner else (error.strerror or str(error) or "no reason").splitlines()[0]
     return (
         f"Cannot write {target}: the file system answered '{text}'; nothing was kept under that "
         "name. Free some space or choose another place."

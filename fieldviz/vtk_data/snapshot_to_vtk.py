@@ -158,11 +158,10 @@ def _edges(snapshot: Snapshot, block: int, with_halo: bool) -> tuple[Array, Arra
 
 
 def _points(r: Array, theta: Array, phi: Array) -> Array:
+    from fieldviz.wedge._kernels import nodes_to_cartesian
+
     points = np.empty((len(phi), len(theta), len(r), 3))
-    R = np.sin(theta)[:, None] * r
-    np.multiply(np.cos(phi)[:, None, None], R, out=points[..., 0])
-    np.multiply(np.sin(phi)[:, None, None], R, out=points[..., 1])
-    points[..., 2] = np.cos(theta)[:, None] * r
+    nodes_to_cartesian(r, np.sin(theta), np.cos(theta), np.sin(phi), np.cos(phi), points)
     return points
 
 

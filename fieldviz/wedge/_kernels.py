@@ -212,8 +212,24 @@ def rotate_to_cartesian(v_r, v_theta, v_phi, sin_t, cos_t, sin_p, cos_p, vectors
     n_phi, n_theta, n_r = v_r.shape
     for row in prange(n_phi * n_theta):
         k, j = row // n_theta, row % n_theta
+        sine, cosine, cos_phi, sin_phi = sin_t[j], cos_t[j], cos_p[k], sin_p[k]
+        along_r, along_theta, along_phi = v_r[k, j], v_theta[k, j], v_phi[k, j]
+        out = vectors[k, j]
         for i in range(n_r):
-            v_R = v_r[k, j, i] * sin_t[j] + v_theta[k, j, i] * cos_t[j]
-            vectors[k, j, i, 0] = v_R * cos_p[k] - v_phi[k, j, i] * sin_p[k]
-            vectors[k, j, i, 1] = v_R * sin_p[k] + v_phi[k, j, i] * cos_p[k]
-            vectors[k, j, i, 2] = v_r[k, j, i] * cos_t[j] - v_theta[k, j, i] * sin_t[j]
+            v_R = along_r[i] * sine + along_theta[i] * cosine
+            out[i, 0] = v_R * cos_phi - along_phi[i] * sin_phi
+            out[i, 1] = v_R * sin_phi + along_phi[i] * cos_phi
+            out[i, 2] = along_r[i] * cosine - along_theta[i] * sine
+
+
+@njit(cache=True, nogil=True, parallel=True)
+def nodes_to_cartesian(r, sin_t, cos_t, sin_p, cos_p, points):
+    """Cartesian nodes (n_phi, n_theta, n_r, 3) of a block from its edges."""
+    n_theta = sin_t.shape[0]
+    for row in prange(sin_p.shape[0] * n_theta):
+        k, j = row // n_theta, row % n_theta
+        x, y, z = sin_t[j] * cos_p[k], sin_t[j] * sin_p[k], cos_t[j]
+        for i in range(r.shape[0]):
+            points[k, j, i, 0] = r[i] * x
+            points[k, j, i, 1] = r[i] * y
+            points[k, j, i, 2] = r[i] * z

@@ -82,7 +82,7 @@ class WedgeGrid:
             raise GridError(
                 f"Cannot build the grid: expected {self.n_blocks} whole-number levels, "
                 f"got an array of shape {level.shape} and type {level.dtype}; "
-            "leave them out and they are worked out."
+                "leave them out and they are worked out."
             )
         return level.astype(np.int64)
 

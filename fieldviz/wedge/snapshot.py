@@ -28,7 +28,8 @@ class Block:
     r_edges, theta_edges, phi_edges : (n + 1,) arrays
     cells : mapping of name to (n_phi, n_theta, n_r) array
     faces : mapping of name to array with one more entry along its own axis
-    level : int
+    level : int or None
+        Worked out from the cell sizes if no block names one.
     """
 
     r_edges: Array
@@ -36,7 +37,7 @@ class Block:
     phi_edges: Array
     cells: Mapping[str, Array] = field(default_factory=dict)
     faces: Mapping[str, Array] = field(default_factory=dict)
-    level: int = 0
+    level: int | None = None
 
 
 def face_shape(name: str, block_shape: tuple[int, int, int]) -> tuple[int, int, int]:
@@ -172,7 +173,7 @@ class Snapshot:
             _stacked("r_edges", [block.r_edges for block in blocks]),
             _stacked("theta_edges", [block.theta_edges for block in blocks]),
             _stacked("phi_edges", [block.phi_edges for block in blocks]),
-            np.array([block.level for block in blocks]),
+            _levels(blocks),
         )
         cells = _stacked_fields("cells", [block.cells for block in blocks])
         faces = _stacked_fields("faces", [block.faces for block in blocks])
@@ -264,6 +265,18 @@ def _face_mean(faces: Array, axis: int) -> Array:
     high = list(low)
     low[axis], high[axis] = slice(None, -1), slice(1, None)
     return (faces[tuple(low)] + faces[tuple(high)]) * faces.dtype.type(0.5)
+
+
+def _levels(blocks: Sequence[Block]) -> Array | None:
+    levels = [block.level for block in blocks]
+    if all(level is None for level in levels):
+        return None
+    if any(level is None for level in levels):
+        raise GridError(
+            f"Cannot build the snapshot: expected a level for every block or for none, got none "
+            f"for block {levels.index(None)}; name it, or leave all out."
+        )
+    return np.array(levels)
 
 
 def _stacked(name: str, arrays: Sequence[Array]) -> Array:

@@ -87,8 +87,7 @@ class SaltmarshDisc:
         Plasma beta of the background net vertical field.
     magnetic_turbulence, velocity_turbulence : float
         rms of random solenoidal fluctuations near the midplane, in units of the background B_z
-        and of the sound speed. Their azimuthal mean is zero on meshes of five azimuth cells or more;
-        fewer cannot hold the waves.
+        and of the sound speed. The azimuthal mean of the poloidal part is zero.
     sheet_wander : float
         Amplitude in R by which sheets bend with azimuth.
     field_noise : float
