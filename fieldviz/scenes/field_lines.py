@@ -1,0 +1,152 @@
+"""Poloidal field lines of the azimuth-averaged field, as tubes on planes of constant azimuth."""
+
+from __future__ import annotations
+
+from itertools import pairwise
+from typing import Any
+
+import numpy as np
+import pyvista as pv
+from contourpy import contour_generator
+from scipy.interpolate import CubicSpline
+from scipy.ndimage import gaussian_filter, gaussian_filter1d
+
+from fieldviz.scenes.poloidal_flux import (
+    averaged_poloidal_field,
+    equal_flux_levels,
+    poloidal_flux,
+)
+from fieldviz.scenes.surfaces import empty_surface
+from fieldviz.wedge.coordinates import points_to_cartesian
+from fieldviz.wedge.geometry import centres
+from fieldviz.wedge.snapshot import Snapshot
+from fieldviz.wedge.typing import Array
+
+__all__ = ["poloidal_lines", "tubes"]
+
+_REFINEMENT = 4
+_DIRECTION_WIDTH = (0.8, 3.0)  # cells along theta and r over which directions are averaged
+_SMOOTHING = 1.2  # of the largest cells: lines are smoothed over this length
+_STEEPEST = 6.0  # d ln r/d theta beyond which field lines count as radial
+
+
+def poloidal_lines(snapshot: Snapshot, r_end: float | None, count: int) -> list[Array]:
+    """Contours of the flux function, equal flux between neighbours.
+
+    Parameters
+    ----------
+    snapshot : Snapshot
+        With the poloidal magnetic field.
+    r_end : float or None
+        Outer radius; None: the whole wedge.
+    count : int
+        Number of flux values.
+
+    Returns
+    -------
+    list of (n, 2) arrays
+        r and theta along each line.
+    """
+    r, theta_edges, B_r, B_theta = averaged_poloidal_field(snapshot, r_end)
+    psi = poloidal_flux(r, theta_edges, B_r, B_theta)
+    x, y, fine = _refined(np.log(r), theta_edges, psi, _slopes(B_r, B_theta))
+    generator = contour_generator(x, y, fine)
+    lines = []
+    for level in equal_flux_levels(psi, count):
+        for line in generator.lines(float(level)):
+            place = _smoothed(np.asarray(line), _SMOOTHING * min(_coarsest(snapshot), 0.05))
+            lines.append(np.column_stack([np.exp(place[:, 0]), place[:, 1]]))
+    return lines
+
+
+def _coarsest(snapshot: Snapshot) -> float:
+    """Width of the largest cells in ln r and theta."""
+    grid = snapshot.grid
+    steps = np.diff(grid.r_edges) / centres(grid.r_edges), np.diff(grid.theta_edges)
+    return float(max(np.median(step, axis=1).max() for step in steps))
+
+
+def _smoothed(line: Array, width: float) -> Array:
+    """A line with the traces of single cells taken out; its ends stay where they are.
+
+    Vertices are spread evenly along the line and averaged with a normal weight of this width, in
+    ln r and theta. Beyond its ends the line is continued by its own mirror image in the end point.
+    """
+    length = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(line, axis=0).T))])
+    if length[-1] < 4.0 * width:
+        return line
+    count = int(np.ceil(length[-1] / (0.25 * width))) + 1
+    even = np.column_stack(
+        [np.interp(np.linspace(0, length[-1], count), length, axis) for axis in line.T]
+    )
+    chord = np.linspace(even[0], even[-1], count)
+    # What is left is 0 at both ends; an odd continuation keeps it so.
+    rest = even - chord
+    doubled = np.concatenate([-rest[:0:-1], rest, -rest[-2::-1]])
+    smooth = gaussian_filter1d(doubled, 4.0, axis=0)
+    return np.asarray(chord + smooth[count - 1 : 2 * count - 1])
+
+
+def _slopes(B_r: Array, B_theta: Array) -> Array:
+    """D ln r/d theta of the field lines, between the rows of cells' edges: (n_theta, n_r)."""
+    # Directions change slowly even where the strength leaps: a mean over neighbours is better.
+    B_r, B_theta = (gaussian_filter(B, _DIRECTION_WIDTH) for B in (B_r, B_theta))
+    steep = np.abs(B_theta) < np.abs(B_r) / _STEEPEST
+    ratio = B_r / np.where(steep, 1.0, B_theta)
+    return np.where(steep, 0.0, ratio)
+
+
+def _refined(x: Array, theta: Array, psi: Array, slopes: Array) -> tuple[Array, Array, Array]:
+    """Psi on a finer mesh of ln r and theta, interpolated between rows along the field lines.
+
+    A sheet is a steep step of psi that lies aslant on the mesh. Interpolation at constant r would
+    turn it into a staircase; along the direction of the field psi hardly changes.
+    """
+    fine_x = np.interp(
+        np.arange(_REFINEMENT * (len(x) - 1) + 1) / _REFINEMENT, np.arange(len(x)), x
+    )
+    rows = [CubicSpline(x, row) for row in psi]
+    known = np.array([row(fine_x) for row in rows])
+    result, heights = [known[0]], [theta[0]]
+    for j, step in enumerate(np.diff(theta)):
+        shift = np.interp(fine_x, x, slopes[j]) * step
+        for part in np.arange(1, _REFINEMENT) / _REFINEMENT:
+            # Past the ends of the radii a row is continued by its last value.
+            above = rows[j](np.clip(fine_x - part * shift, x[0], x[-1]))
+            below = rows[j + 1](np.clip(fine_x + (1 - part) * shift, x[0], x[-1]))
+            result.append((1 - part) * above + part * below)
+            heights.append(theta[j] + part * step)
+        result.append(known[j + 1])
+        heights.append(theta[j + 1])
+    return fine_x, np.array(heights), np.array(result)
+
+
+def tubes(lines: list[Array], phi: float, width: float, *, widening: bool = True) -> Any:
+    """Tubes along lines (r, theta) in the plane of azimuth `phi`.
+
+    Parameters
+    ----------
+    lines : list of (n, 2) arrays
+    phi : float
+        Radians.
+    width : float
+        Radius of a tube at the outermost point of all lines.
+    widening : bool
+        Tubes are thinner at smaller r.
+    """
+    lines = [line for line in lines if len(line) > 3]
+    if not lines:
+        return empty_surface()
+    end = max(float(line[:, 0].max()) for line in lines)
+    points = np.concatenate([np.column_stack([line, np.full(len(line), phi)]) for line in lines])
+    starts = np.cumsum([0, *(len(line) for line in lines)])
+    cells = np.concatenate(
+        [
+            np.concatenate([[stop - start], np.arange(start, stop)])
+            for start, stop in pairwise(starts)
+        ]
+    )
+    threads = pv.PolyData(points_to_cartesian(points), lines=cells)
+    share = 0.35 + 0.65 * points[:, 0] / end if widening else np.ones(len(points))
+    threads.point_data["width"] = width * share
+    return threads.tube(scalars="width", absolute=True, n_sides=12)

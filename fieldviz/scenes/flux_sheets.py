@@ -1,0 +1,242 @@
+"""The scene flux-sheets: nested surfaces of B_z R^b in a ring with its front taken away."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from fieldviz.scenes.composition import ColourBar, Composition, Swatches
+from fieldviz.scenes.description import FluxSheets
+from fieldviz.scenes.display_grid import DisplayGrid, Window, make_display_grid
+from fieldviz.scenes.from_data import FieldScale, round_figure, sheet_levels
+from fieldviz.scenes.ingredients import (
+    DensityScale,
+    add_density,
+    add_vertical_field,
+    density_bar,
+    field_label,
+)
+from fieldviz.scenes.stage import Layer, Material
+from fieldviz.scenes.surfaces import contour, face, merged
+from fieldviz.scenes.theme import Theme
+from fieldviz.scenes.wording import degrees_text, number_text
+from fieldviz.wedge.grid import WedgeGrid
+from fieldviz.wedge.snapshot import Snapshot
+
+__all__ = ["compose_flux_sheets"]
+
+_NEEDED = ("density", "magnetic_r", "magnetic_theta")
+_FADE_SHARE = 0.2  # of the outer radius over which the disc's surface fades away
+
+
+def compose_flux_sheets(
+    snapshot: Snapshot, scene: FluxSheets, theme: Theme, nodes: int
+) -> Composition:
+    """Make the flux sheets of a snapshot.
+
+    Parameters
+    ----------
+    snapshot : Snapshot
+        With density and the poloidal magnetic field.
+    scene : FluxSheets
+    theme : Theme
+    nodes : int
+        Size of the display grid at most.
+
+    Returns
+    -------
+    Composition
+
+    Raises
+    ------
+    MissingFieldError
+    """
+    snapshot.require("draw flux sheets", *_NEEDED)
+    grid = _grid(snapshot, scene, nodes)
+    grid, density = add_density(
+        grid, scene.surface_level, scene.density_exponent, scene.density_limits, whole=False
+    )
+    grid, field = add_vertical_field(grid, scene.field_exponent)
+    levels = _levels(scene, field)
+    layers = _layers(grid, density, levels, scene.inner_height_limit, theme)
+    span = float(grid.phi[-1] - grid.phi[0])
+    return Composition(
+        title="Flux sheets",
+        subtitle="where the vertical field gathers, and the disc it threads",
+        layers=layers,
+        azimuth=_opening_middle(grid) + np.radians(scene.camera_azimuth),
+        height=np.radians(scene.camera_height),
+        legends=_legends(density, field, levels, theme),
+        caption=_caption(snapshot.grid, scene, grid, field, layers, span),
+        scale_bar=True,
+        drawn={
+            "outer_level": levels[0],
+            "inner_level": levels[1],
+            "field_exponent": field.exponent,
+            "field_sign": field.sign,
+            "density_exponent": density.exponent,
+            "density_limits": list(density.limits),
+            "shown_azimuth": float(np.degrees(span)),
+        },
+    )
+
+
+def _grid(snapshot: Snapshot, scene: FluxSheets, nodes: int) -> DisplayGrid:
+    lowest = float(np.arctan2(1.0, scene.height_limit))
+    window = Window(
+        r_end=scene.outer_radius,
+        theta_range=(lowest, np.pi - lowest),
+        phi_start=snapshot.grid.phi_range[0],
+        phi_span=np.radians(scene.shown_azimuth),
+    )
+    return make_display_grid(snapshot, _NEEDED, window, budget=nodes)
+
+
+def _opening_middle(grid: DisplayGrid) -> float:
+    """Azimuth of the middle of what is not shown."""
+    return float(0.5 * (grid.phi[0] + grid.phi[-1]) + np.pi)
+
+
+def _levels(scene: FluxSheets, field: FieldScale) -> tuple[float, float]:
+    outer, inner = sheet_levels(field.profile)
+    return (
+        outer if scene.outer_level is None else scene.outer_level,
+        inner if scene.inner_level is None else scene.inner_level,
+    )
+
+
+def _layers(
+    grid: DisplayGrid,
+    density: DensityScale,
+    levels: tuple[float, float],
+    inner_height: float,
+    theme: Theme,
+) -> list[Layer]:
+    outer, inner = levels
+    closed = _is_closed(grid)
+    section = Material(
+        scalars="log_density",
+        colour_map=theme.colour_map("density"),
+        limits=density.limits,
+        lit=False,
+    )
+    outer_mesh = contour(grid.coarser(3, 1), "sheet_field", outer)
+    inner_mesh = _inner_sheets(_lower_than(grid, inner_height), inner, density, closed)
+    return [
+        Layer("disc surface", _disc_surface(grid, density, theme), _DISC_MATERIAL),
+        Layer("cut faces", _cut_faces(grid, density, closed), section),
+        Layer("outer sheets", outer_mesh, _sheet(theme, theme.outer_share, theme.outer_opacity)),
+        Layer("inner sheets", inner_mesh, _sheet(theme, theme.inner_share, 1.0)),
+    ]
+
+
+def _sheet(theme: Theme, share: float, opacity: float) -> Material:
+    return Material(
+        theme.colour("vertical_field", share),
+        opacity=opacity,
+        ambient=0.10,
+        specular=0.35,
+        specular_power=30.0,
+    )
+
+
+_DISC_MATERIAL = Material(scalars="colour", rgba=True, specular=0.35, specular_power=10.0)
+
+
+def _is_closed(grid: DisplayGrid) -> bool:
+    return bool(grid.phi[-1] - grid.phi[0] > 2 * np.pi - 1e-6)
+
+
+def _disc_surface(grid: DisplayGrid, density: DensityScale, theme: Theme) -> Any:
+    """The disc's surface with colours that fade towards its outer end."""
+    surface = contour(grid.coarser(2, 2, 2), "log_surface_density", density.surface)
+    if surface.n_points:
+        R = np.hypot(*np.asarray(surface.points).T[:2])
+        end = float(grid.r[-1])
+        fade = np.clip((0.985 * end - R) / (_FADE_SHARE * end), 0.0, 1.0) ** 1.5
+        colours = np.empty((len(R), 4))
+        colours[:, :3] = theme.rgb("haze")
+        colours[:, 3] = theme.haze_opacity * fade
+        surface.point_data["colour"] = np.rint(255 * colours).astype(np.uint8)
+    return surface
+
+
+def _cut_faces(grid: DisplayGrid, density: DensityScale, closed: bool) -> Any:
+    if closed:
+        return merged([])
+    within = ("log_surface_density", density.surface)
+    return merged([face(grid, "phi", end, ("log_density",), within) for end in (0, -1)])
+
+
+def _lower_than(grid: DisplayGrid, height: float) -> DisplayGrid:
+    """The nodes with abs(z)/R up to a height; at least three rows."""
+    within = np.flatnonzero(np.abs(1 / np.tan(grid.theta)) <= height + 1e-9)
+    if len(within) < 3:
+        return grid
+    return grid.part(theta=slice(int(within[0]), int(within[-1]) + 1))
+
+
+def _inner_sheets(grid: DisplayGrid, level: float, density: DensityScale, closed: bool) -> Any:
+    """The opaque surface with lids where it is cut, so that it looks solid."""
+    within = ("sheet_field", level)
+    parts = [contour(grid, *within)]
+    parts += [face(grid, axis, end, (), within) for axis in ("theta", "r") for end in (0, -1)]
+    if not closed:
+        # Within the disc the cut shows its density, not the sheet.
+        sheet = grid.fields["sheet_field"] / level - 1
+        outside = density.surface - grid.fields["log_surface_density"]
+        ends = grid.with_fields(lid=np.minimum(sheet, outside))
+        parts += [face(ends, "phi", end, (), ("lid", 0.0)) for end in (0, -1)]
+    return merged(parts)
+
+
+def _legends(
+    density: DensityScale, field: FieldScale, levels: tuple[float, float], theme: Theme
+) -> list[ColourBar | Swatches]:
+    factor, label = field_label(field, levels[1])
+    texts = [number_text(level / factor) for level in levels]
+    return [
+        density_bar(theme, density, r"cut face: $\rho$ [code units]"),
+        Swatches(
+            f"surfaces of {label}",
+            [("outer sheets", None, texts[0]), ("inner sheets", "outer sheets", texts[1])],
+        ),
+    ]
+
+
+def _caption(
+    wedge: WedgeGrid,
+    scene: FluxSheets,
+    grid: DisplayGrid,
+    field: FieldScale,
+    layers: list[Layer],
+    span: float,
+) -> list[str]:
+    phrases = [_repeat_phrase(wedge, span)]
+    if not _is_closed(grid):
+        phrases.append(f"front {degrees_text(2 * np.pi - span)} taken away")
+    heights = rf"$|z| < {scene.height_limit:g}\,R$"
+    if scene.inner_height_limit < scene.height_limit:
+        heights += rf", the inner ones for $|z| < {scene.inner_height_limit:g}\,R$"
+    phrases.append(f"sheets shown for {heights}")
+    phrases.append(
+        f"disc surface: {number_text(round_figure(scene.surface_level))} of the midplane density"
+    )
+    if field.sign < 0:
+        phrases.append(r"the net field points down: $-B_z$ is shown")
+    phrases += [f"no {layer.name} in these data" for layer in layers if not layer.mesh.n_points
+                and not (layer.name == "cut faces" and _is_closed(grid))]  # fmt: skip
+    if grid.cells_left_out:
+        phrases.append(f"{grid.cells_left_out} cells without a number left out")
+    return phrases
+
+
+def _repeat_phrase(wedge: WedgeGrid, span: float) -> str:
+    if wedge.is_full_ring:
+        return f"{degrees_text(span)} of the full ring"
+    times = span / wedge.period
+    if times <= 1 + 1e-6:
+        return f"{degrees_text(span)} of a wedge of {degrees_text(wedge.period)}"
+    count = f"{times:.1f}".removesuffix(".0")
+    return f"wedge of {degrees_text(wedge.period)} repeated {count}\N{MULTIPLICATION SIGN}"
