@@ -11,22 +11,20 @@ from contourpy import contour_generator
 from scipy.interpolate import CubicSpline
 from scipy.ndimage import gaussian_filter, gaussian_filter1d
 
-from fieldviz.scenes.poloidal_flux import (
-    averaged_poloidal_field,
-    equal_flux_levels,
-    poloidal_flux,
-)
+from fieldviz.derived.flux_function import flux_function
+from fieldviz.scenes.finite_cells import finite_field
 from fieldviz.scenes.surfaces import empty_surface
 from fieldviz.wedge.coordinates import points_to_cartesian
 from fieldviz.wedge.geometry import centres
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
 
-__all__ = ["poloidal_lines", "tubes"]
+__all__ = ["equal_flux_levels", "poloidal_lines", "tubes"]
 
 _REFINEMENT = 4
 _DIRECTION_WIDTH = (0.8, 3.0)  # cells along theta and r over which directions are averaged
 _SMOOTHING = 1.2  # of the largest cells: lines are smoothed over this length
+_MOST_LINES = 2000  # of edges in either direction
 _STEEPEST = 6.0  # d ln r/d theta beyond which field lines count as radial
 
 
@@ -47,9 +45,14 @@ def poloidal_lines(snapshot: Snapshot, r_end: float | None, count: int) -> list[
     list of (n, 2) arrays
         r and theta along each line.
     """
-    r, theta_edges, B_r, B_theta = averaged_poloidal_field(snapshot, r_end)
-    psi = poloidal_flux(r, theta_edges, B_r, B_theta)
-    x, y, fine = _refined(np.log(r), theta_edges, psi, _slopes(B_r, B_theta))
+    grid = snapshot.grid
+    x = _lines_of_edges(np.log(np.maximum(grid.r_edges, 1e-3 * grid.r_range[1])))
+    if r_end is not None:
+        x = x[x <= np.log(r_end) + 1e-12]
+    theta = _lines_of_edges(grid.theta_edges)
+    r = np.clip(np.exp(x), *grid.r_range)
+    psi = flux_function(_without_gaps(snapshot), r, theta)
+    x, y, fine = _refined(x, theta, psi, _slopes(x, theta, psi))
     generator = contour_generator(x, y, fine)
     lines = []
     for level in equal_flux_levels(psi, count):
@@ -57,6 +60,32 @@ def poloidal_lines(snapshot: Snapshot, r_end: float | None, count: int) -> list[
             place = _smoothed(np.asarray(line), _SMOOTHING * min(_coarsest(snapshot), 0.05))
             lines.append(np.column_stack([np.exp(place[:, 0]), place[:, 1]]))
     return lines
+
+
+def equal_flux_levels(psi: Array, count: int) -> Array:
+    """Values of psi with the same flux between neighbours and half of it beside the ends."""
+    low, high = float(np.min(psi)), float(np.max(psi))
+    return low + (high - low) * (np.arange(count) + 0.5) / count
+
+
+def _lines_of_edges(edges: Array) -> Array:
+    """All different edges of all blocks, thinned where there are very many."""
+    lines = np.unique(edges)
+    apart = np.concatenate([[True], np.diff(lines) > 1e-9 * np.ptp(lines)])
+    lines = lines[apart]
+    stride = -(-len(lines) // _MOST_LINES)
+    return np.unique(np.append(lines[::stride], lines[-1]))
+
+
+def _without_gaps(snapshot: Snapshot) -> Snapshot:
+    """The poloidal field alone, cells or faces without a number filled from their neighbours."""
+    names = ("magnetic_r", "magnetic_theta")
+    on_faces = all(name in snapshot.faces for name in names)
+    values = {
+        name: finite_field(snapshot.faces[name] if on_faces else snapshot.cell(name))[0]
+        for name in names
+    }
+    return Snapshot.from_grid(snapshot.grid, **{"faces" if on_faces else "cells": values})
 
 
 def _coarsest(snapshot: Snapshot) -> float:
@@ -87,13 +116,16 @@ def _smoothed(line: Array, width: float) -> Array:
     return np.asarray(chord + smooth[count - 1 : 2 * count - 1])
 
 
-def _slopes(B_r: Array, B_theta: Array) -> Array:
-    """D ln r/d theta of the field lines, between the rows of cells' edges: (n_theta, n_r)."""
+def _slopes(x: Array, theta: Array, psi: Array) -> Array:
+    """D ln r/d theta of the field lines, between the rows of psi: (n_theta - 1, n_r)."""
+    along_theta = np.diff(psi, axis=0) / np.diff(theta)[:, None]
+    along_x = 0.5 * (np.gradient(psi[1:], x, axis=1) + np.gradient(psi[:-1], x, axis=1))
     # Directions change slowly even where the strength leaps: a mean over neighbours is better.
-    B_r, B_theta = (gaussian_filter(B, _DIRECTION_WIDTH) for B in (B_r, B_theta))
-    steep = np.abs(B_theta) < np.abs(B_r) / _STEEPEST
-    ratio = B_r / np.where(steep, 1.0, B_theta)
-    return np.where(steep, 0.0, ratio)
+    along_theta, along_x = (
+        gaussian_filter(values, _DIRECTION_WIDTH) for values in (along_theta, along_x)
+    )
+    steep = np.abs(along_x) < np.abs(along_theta) / _STEEPEST
+    return np.where(steep, 0.0, -along_theta / np.where(steep, 1.0, along_x))
 
 
 def _refined(x: Array, theta: Array, psi: Array, slopes: Array) -> tuple[Array, Array, Array]:

@@ -42,7 +42,12 @@ def test_no_command_is_forgotten():
 
 @pytest.mark.parametrize(
     "arguments",
-    [["nonsense"], ["symmetry"], ["symmetry", "a.h5", "--no-such"], ["render", "a", "--theme", "x"]],
+    [
+        ["nonsense"],
+        ["symmetry"],
+        ["symmetry", "a.h5", "--no-such"],
+        ["render", "a", "--theme", "x"],
+    ],
 )
 def test_a_wrong_call_exits_with_2(capsys, arguments):
     code, out, err = call(capsys, *arguments)
@@ -115,7 +120,9 @@ def test_sample_refuses_what_cannot_be(capsys, tmp_path):
 
 def test_export(capsys, tmp_path, disc_file):
     target = tmp_path / "disc.vtkhdf"
-    code, out, _ = call(capsys, "export", disc_file, "-o", target, "--fields", "density", "pressure")
+    code, out, _ = call(
+        capsys, "export", disc_file, "-o", target, "--fields", "density", "pressure"
+    )
     assert code == 0
     assert out.strip() == str(target)
     code, _, err = call(capsys, "export", disc_file, "-o", tmp_path / "disc.csv")
