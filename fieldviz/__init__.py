@@ -11,7 +11,26 @@ from typing import TYPE_CHECKING
 from fieldviz._version import __version__
 
 if TYPE_CHECKING:
+    from fieldviz.derived.current_density import current_density as current_density
+    from fieldviz.derived.flux_function import flux_function as flux_function
+    from fieldviz.derived.vector_calculus import curl as curl
+    from fieldviz.derived.vector_calculus import divergence as divergence
+    from fieldviz.derived.vector_calculus import gradient as gradient
     from fieldviz.errors import FieldvizError as FieldvizError
+    from fieldviz.lines.line_set import LineSet as LineSet
+    from fieldviz.lines.seeds import equal_flux_plan as equal_flux_plan
+    from fieldviz.lines.seeds import equal_flux_seeds as equal_flux_seeds
+    from fieldviz.lines.seeds import even_area_seeds as even_area_seeds
+    from fieldviz.lines.seeds_common import SeedPlan as SeedPlan
+    from fieldviz.lines.seeds_shapes import cone_seeds as cone_seeds
+    from fieldviz.lines.seeds_shapes import given_seeds as given_seeds
+    from fieldviz.lines.seeds_shapes import ring_seeds as ring_seeds
+    from fieldviz.lines.seeds_shapes import sphere_seeds as sphere_seeds
+    from fieldviz.lines.seeds_sheets import sheet_plan as sheet_plan
+    from fieldviz.lines.seeds_sheets import sheet_seeds as sheet_seeds
+    from fieldviz.lines.seeds_wind import wind_plan as wind_plan
+    from fieldviz.lines.seeds_wind import wind_seeds as wind_seeds
+    from fieldviz.lines.tracing import trace_lines as trace_lines
     from fieldviz.scenes.render import render as render
     from fieldviz.snapshots.reader import read_snapshot as read_snapshot
     from fieldviz.snapshots.series import SnapshotSeries as SnapshotSeries
@@ -30,17 +49,36 @@ if TYPE_CHECKING:
 _HOMES = {
     "Block": "fieldviz.wedge.snapshot",
     "FieldvizError": "fieldviz.errors",
+    "LineSet": "fieldviz.lines.line_set",
     "SaltmarshDisc": "fieldviz.wedge.demo",
+    "SeedPlan": "fieldviz.lines.seeds_common",
     "Snapshot": "fieldviz.wedge.snapshot",
     "SnapshotSeries": "fieldviz.snapshots.series",
     "Unit": "fieldviz.wedge.units",
     "UnitScales": "fieldviz.wedge.units",
+    "cone_seeds": "fieldviz.lines.seeds_shapes",
+    "curl": "fieldviz.derived.vector_calculus",
+    "current_density": "fieldviz.derived.current_density",
     "demo_disc": "fieldviz.wedge.demo",
+    "divergence": "fieldviz.derived.vector_calculus",
+    "equal_flux_plan": "fieldviz.lines.seeds",
+    "equal_flux_seeds": "fieldviz.lines.seeds",
+    "even_area_seeds": "fieldviz.lines.seeds",
+    "flux_function": "fieldviz.derived.flux_function",
+    "given_seeds": "fieldviz.lines.seeds_shapes",
+    "gradient": "fieldviz.derived.vector_calculus",
     "read_series": "fieldviz.snapshots.series",
     "read_snapshot": "fieldviz.snapshots.reader",
     "render": "fieldviz.scenes.render",
+    "ring_seeds": "fieldviz.lines.seeds_shapes",
     "sample": "fieldviz.wedge.sampling",
+    "sheet_plan": "fieldviz.lines.seeds_sheets",
+    "sheet_seeds": "fieldviz.lines.seeds_sheets",
+    "sphere_seeds": "fieldviz.lines.seeds_shapes",
     "to_vtk": "fieldviz.vtk_data.snapshot_to_vtk",
+    "trace_lines": "fieldviz.lines.tracing",
+    "wind_plan": "fieldviz.lines.seeds_wind",
+    "wind_seeds": "fieldviz.lines.seeds_wind",
     "wind_symmetry": "fieldviz.symmetry.wind_symmetry",
     "write_snapshot": "fieldviz.snapshots.writer",
 }

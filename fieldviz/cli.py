@@ -193,6 +193,65 @@ def symmetry(
 
 
 @app.command
+def lines(
+    file: Path,
+    *,
+    output: Output = None,
+    seeds: Literal["equal-flux", "even-area", "sheets", "wind", "points"] = "equal-flux",
+    count: int = 200,
+    radii: Annotated[tuple[float, ...], Parameter(consume_multiple=True)] = (),
+    points: Path | None = None,
+    field: Literal["magnetic", "velocity"] = "magnetic",
+    interpolation: Literal["auto", "flux", "linear"] = "auto",
+    direction: Literal["both", "forward", "backward"] = "both",
+    tolerance: float = 1e-6,
+    sample: Annotated[tuple[str, ...], Parameter(consume_multiple=True)] = (),
+    layout: Layout = None,
+    as_json: Annotated[bool, Parameter("--json")] = False,
+) -> str:
+    """Trace field lines or streamlines and say where they end.
+
+    Example: fieldviz lines disc.h5 --seeds equal-flux --count 200 -o lines.vtp
+
+    Parameters
+    ----------
+    file
+        Snapshot.
+    output
+        Name ending in .vtp (VTK), .csv or .npz; without it only the summary is printed.
+    seeds
+        equal-flux: every line carries the same flux. even-area: also where the field is weak.
+        sheets: along flux sheets of given --radii. wind: by mass flux, each side apart.
+    count
+        Number of lines.
+    radii
+        Radii of the sheets.
+    points
+        CSV file of r,theta,phi in radians.
+    field
+        What to trace.
+    interpolation
+        auto takes flux where the magnetic field is stored on faces, else linear.
+    direction
+        Along the field, against it, or both.
+    tolerance
+        Largest error of a step over r, for linear interpolation.
+    sample
+        Fields to sample along the lines.
+    layout
+        Layout description of a foreign file.
+    as_json
+        Print JSON for programs.
+    """
+    from fieldviz.commands.lines import LineRequest, run
+
+    request = LineRequest(
+        seeds, count, radii, points, field, interpolation, direction, tolerance, sample
+    )
+    return run(file, output, layout=layout, request=request, as_json=as_json)
+
+
+@app.command
 def export(
     file: Path,
     output: Annotated[Path, Parameter(name=["--output", "-o"])],

@@ -19,6 +19,7 @@ from pathlib import Path
 
 import h5py
 import numpy as np
+from numba import njit, prange
 
 import fieldviz as fv
 
@@ -115,6 +116,61 @@ def import_row() -> Row:
     return Row("import fieldviz, against the 0.15 s allowed", min(times), 0.15, "s", 1.0)
 
 
+@njit(parallel=True, nogil=True)
+def copy_three(a, b, c, copied_a, copied_b, copied_c):
+    for k in prange(a.shape[0]):
+        for j in range(a.shape[1]):
+            for i in range(a.shape[2]):
+                copied_a[k, j, i] = a[k, j, i]
+                copied_b[k, j, i] = b[k, j, i]
+                copied_c[k, j, i] = c[k, j, i]
+
+
+def curl_row(snapshot: fv.Snapshot) -> Row:
+    """The whole of fv.curl against copying three arrays of haloed size, both into new memory."""
+    haloed = [
+        np.pad(snapshot.cell(f"magnetic_{axis}")[0], 1, mode="edge")
+        for axis in ("r", "theta", "phi")
+    ]
+
+    def copy() -> list[np.ndarray]:
+        copies = [np.empty_like(array) for array in haloed]
+        copy_three(*haloed, *copies)
+        return copies
+
+    def curl() -> object:
+        return fv.curl(snapshot, "magnetic")
+
+    copy(), curl()
+    curled, copied = best_times(curl, copy, repeats=15)
+    return Row("curl, against a copy of six arrays", curled * 1e3, copied * 1e3, "ms", 1.2)
+
+
+def vtk_curl_row(shape: tuple[int, int, int] = (32, 128, 192)) -> Row:
+    """Curl against the vorticity of VTK's gradient filter, on cells of a curvilinear grid."""
+    from vtkmodules.vtkCommonDataModel import vtkDataObject
+    from vtkmodules.vtkFiltersGeneral import vtkGradientFilter
+
+    disc = fv.demo_disc(shape=shape, precision="single")
+    names = [f"magnetic_{axis}" for axis in ("r", "theta", "phi")]
+    snapshot = fv.Snapshot.from_grid(disc.grid, cells={name: disc.cell(name) for name in names})
+    gradient = vtkGradientFilter()
+    gradient.SetInputData(fv.to_vtk(snapshot).GetBlock(0).GetBlock(0))
+    gradient.SetInputScalars(vtkDataObject.FIELD_ASSOCIATION_CELLS, "magnetic")
+    gradient.ComputeVorticityOn()
+    gradient.ComputeGradientOff()
+
+    def in_vtk() -> None:
+        gradient.Modified()
+        gradient.Update()
+
+    curled, in_filter = best_times(lambda: fv.curl(snapshot, "magnetic"), in_vtk, repeats=5)
+    assert gradient.GetOutput().GetCellData().HasArray("Vorticity")
+    per_cell = 1e9 / np.prod(shape)
+    what = "curl per cell, against VTK's gradient filter"
+    return Row(what, curled * per_cell, in_filter * per_cell, "ns", 1 / 50)
+
+
 def measure(shape: tuple[int, int, int], folder: Path) -> list[Row]:
     path = folder / "benchmark.h5"
     fv.write_snapshot(path, fv.demo_disc(shape=shape, precision="single"))
@@ -128,6 +184,8 @@ def measure(shape: tuple[int, int, int], folder: Path) -> list[Row]:
     return [
         Row("read all fields, against raw h5py reads", package, raw, "s", 1.2),
         Row("build the VTK object with vectors, against the read", vtk, package, "s", 1.0),
+        curl_row(snapshot),
+        vtk_curl_row(),
         memory_row(path),
         import_row(),
     ]

@@ -21,9 +21,14 @@ done
 "$fieldviz" render sample_wedge/two_levels.h5 --scene flux-sheets -o pictures/two-levels.png
 
 echo
+echo "== Field lines =="
+"$fieldviz" lines sample_wedge/saltmarsh_002.h5 --seeds equal-flux --count 200 \
+    -o pictures/lines.vtp
+
+echo
 echo "== Verdict =="
 "$fieldviz" symmetry sample_wedge/saltmarsh_002.h5 | tee pictures/verdict.txt
 
 echo
-echo "Pictures and the verdict lie in $(pwd)/pictures:"
+echo "Pictures, lines and the verdict lie in $(pwd)/pictures:"
 ls pictures

@@ -44,7 +44,8 @@ def flux_function(snapshot: Snapshot, r: Array, theta: Array) -> Array:
     -----
     From edge to edge psi grows by the flux between them over the wedge's azimuth: along the inner
     wall from face to face in theta, from there outward in r. Between edges the flux through a face
-    is shared by cos(theta) or by r^2, and fluxes of faces across theta are linear in cos(theta).
+    is shared by cos(theta) or by r^3, and fluxes of faces across theta are linear in cos(theta):
+    the field without divergence in any cell that `fieldviz.lines` follows with "flux".
     """
     snapshot.require("work out the flux function", "magnetic_r", "magnetic_theta")
     grid = snapshot.grid
@@ -88,9 +89,9 @@ def _outward(snapshot: Snapshot, r: Array, theta: Array) -> Array:
         flux = (_faces_theta(snapshot, block) * area).sum(0)
         cumulative = np.concatenate([np.zeros((len(flux), 1)), np.cumsum(flux, axis=1)], axis=1)
         at_rows = _between(np.cos(edges[block]), cumulative, np.cos(theta[rows]))
-        squares = np.square(grid.r_edges[block])
+        cubes = grid.r_edges[block] ** 3
         for row, values in zip(rows, at_rows, strict=True):
-            total[row] += np.interp(np.square(r), squares, values)
+            total[row] += np.interp(r**3, cubes, values)
     return total
 
 

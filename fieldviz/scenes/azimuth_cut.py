@@ -15,7 +15,7 @@ from fieldviz.errors import MissingFieldError
 from fieldviz.scenes.composition import ColourBar, Composition, RadiusMarks, Swatches
 from fieldviz.scenes.description import AzimuthCut
 from fieldviz.scenes.display_grid import DisplayGrid, Window, make_display_grid
-from fieldviz.scenes.field_lines import poloidal_lines, tubes
+from fieldviz.scenes.field_lines import in_plane, poloidal_lines, tubes
 from fieldviz.scenes.from_data import FieldScale, robust_range, round_figure
 from fieldviz.scenes.ingredients import (
     DensityScale,
@@ -138,7 +138,7 @@ def _layers(cut: _Cut, lines: list[Array], theme: Theme) -> list[Layer]:
     layers.append(_floor(cut, theme))
     if cut.field is not None:
         end = float(cut.grid.r[-1])
-        mesh = tubes(lines, float(cut.grid.phi[-1]), _LINE_WIDTH * end)
+        mesh = tubes(in_plane(lines, float(cut.grid.phi[-1])), _LINE_WIDTH * end)
         bright = Material(theme.rgb("line"), ambient=0.35, specular=0.3)
         layers.append(Layer("field lines", mesh, bright))
     layers.append(_outline(cut, theme))
@@ -175,7 +175,7 @@ def _outline(cut: _Cut, theme: Theme) -> Layer:
         np.column_stack([grid.r, np.full_like(grid.r, high)])[::-1],
         np.column_stack([np.full_like(grid.theta, grid.r[0]), grid.theta])[::-1],
     ]
-    mesh = tubes(ring, float(grid.phi[-1]), 0.0016 * float(grid.r[-1]), widening=False)
+    mesh = tubes(in_plane(ring, float(grid.phi[-1])), 0.0016 * float(grid.r[-1]), widening=False)
     return Layer("wall outline", mesh, Material(theme.rgb("outline"), lit=False))
 
 

@@ -97,6 +97,10 @@ class FluxSheets:
         The translucent surfaces end at abs(z)/R of this value.
     inner_height_limit : float
         The opaque surfaces end at abs(z)/R of this value, so that both are seen from above.
+    line_count : int
+        Field lines along the sheets over the shown azimuth, about; 0 for none.
+    line_height_limit : float
+        Field lines end at abs(z)/R of this value.
     surface_level : float
         Density of the disc's surface over that of the midplane at the same radius.
     outer_radius : float or None
@@ -116,6 +120,8 @@ class FluxSheets:
     inner_level: float | None = None
     height_limit: float = 0.5
     inner_height_limit: float = 0.3
+    line_count: int = 72
+    line_height_limit: float = 0.8
     surface_level: float = 0.1
     outer_radius: float | None = None
     density_exponent: float | None = None
@@ -128,6 +134,8 @@ class FluxSheets:
         _check_range(self, "shown_azimuth", 20.0, 360.0)
         _check_range(self, "height_limit", 0.02, 10.0)
         _check_range(self, "inner_height_limit", 0.02, 10.0)
+        _check_range(self, "line_count", 0, 2000)
+        _check_range(self, "line_height_limit", 0.02, 10.0)
         _check_range(self, "surface_level", 1e-8, 0.99)
         _check_range(self, "camera_height", -89.0, 89.0)
         _check_limits(self, "density_limits")

@@ -1,4 +1,4 @@
-"""Poloidal field lines of the azimuth-averaged field, as tubes on planes of constant azimuth."""
+"""Poloidal field lines of the azimuth-averaged field, and lines of any kind as tubes."""
 
 from __future__ import annotations
 
@@ -19,7 +19,14 @@ from fieldviz.wedge.geometry import centres
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
 
-__all__ = ["equal_flux_levels", "poloidal_lines", "tubes"]
+__all__ = [
+    "coarsest_cell",
+    "equal_flux_levels",
+    "in_plane",
+    "poloidal_lines",
+    "smoothed",
+    "tubes",
+]
 
 _REFINEMENT = 4
 _DIRECTION_WIDTH = (0.8, 3.0)  # cells along theta and r over which directions are averaged
@@ -57,7 +64,7 @@ def poloidal_lines(snapshot: Snapshot, r_end: float | None, count: int) -> list[
     lines = []
     for level in equal_flux_levels(psi, count):
         for line in generator.lines(float(level)):
-            place = _smoothed(np.asarray(line), _SMOOTHING * min(_coarsest(snapshot), 0.05))
+            place = smoothed(np.asarray(line), _SMOOTHING * min(coarsest_cell(snapshot), 0.05))
             lines.append(np.column_stack([np.exp(place[:, 0]), place[:, 1]]))
     return lines
 
@@ -88,20 +95,28 @@ def _without_gaps(snapshot: Snapshot) -> Snapshot:
     return Snapshot.from_grid(snapshot.grid, **{"faces" if on_faces else "cells": values})
 
 
-def _coarsest(snapshot: Snapshot) -> float:
+def coarsest_cell(snapshot: Snapshot) -> float:
     """Width of the largest cells in ln r and theta."""
     grid = snapshot.grid
     steps = np.diff(grid.r_edges) / centres(grid.r_edges), np.diff(grid.theta_edges)
     return float(max(np.median(step, axis=1).max() for step in steps))
 
 
-def _smoothed(line: Array, width: float) -> Array:
+def smoothed(line: Array, width: float) -> Array:
     """A line with the traces of single cells taken out; its ends stay where they are.
 
     Vertices are spread evenly along the line and averaged with a normal weight of this width, in
-    ln r and theta. Beyond its ends the line is continued by its own mirror image in the end point.
+    the coordinates given. Beyond its ends the line is continued by its own mirror image in the end
+    point.
+
+    Parameters
+    ----------
+    line : (n, 2) or (n, 3) array
+        ln r, theta and perhaps phi.
+    width : float
     """
-    length = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(line, axis=0).T))])
+    steps = np.linalg.norm(np.diff(line, axis=0), axis=1)
+    length = np.concatenate([[0.0], np.cumsum(steps)])
     if length[-1] < 4.0 * width:
         return line
     count = int(np.ceil(length[-1] / (0.25 * width))) + 1
@@ -153,25 +168,37 @@ def _refined(x: Array, theta: Array, psi: Array, slopes: Array) -> tuple[Array, 
     return fine_x, np.array(heights), np.array(result)
 
 
-def tubes(lines: list[Array], phi: float, width: float, *, widening: bool = True) -> Any:
-    """Tubes along lines (r, theta) in the plane of azimuth `phi`.
+def in_plane(lines: list[Array], phi: float) -> list[Array]:
+    """Lines (r, theta) put into the plane of one azimuth: (n, 3) arrays."""
+    return [np.column_stack([line, np.full(len(line), phi)]) for line in lines]
+
+
+def tubes(
+    lines: list[Array],
+    width: float,
+    *,
+    widening: bool = True,
+    scalars: tuple[str, list[Array]] | None = None,
+) -> Any:
+    """Tubes along lines.
 
     Parameters
     ----------
-    lines : list of (n, 2) arrays
-    phi : float
-        Radians.
+    lines : list of (n, 3) arrays
+        r, theta, phi.
     width : float
         Radius of a tube at the outermost point of all lines.
     widening : bool
         Tubes are thinner at smaller r.
+    scalars : (name, list of (n,) arrays), optional
+        Values along the lines.
     """
-    lines = [line for line in lines if len(line) > 3]
-    if not lines:
+    kept = [n for n, line in enumerate(lines) if len(line) > 3]
+    if not kept:
         return empty_surface()
-    end = max(float(line[:, 0].max()) for line in lines)
-    points = np.concatenate([np.column_stack([line, np.full(len(line), phi)]) for line in lines])
-    starts = np.cumsum([0, *(len(line) for line in lines)])
+    points = np.concatenate([lines[n] for n in kept])
+    end = float(points[:, 0].max())
+    starts = np.cumsum([0, *(len(lines[n]) for n in kept)])
     cells = np.concatenate(
         [
             np.concatenate([[stop - start], np.arange(start, stop)])
@@ -181,4 +208,7 @@ def tubes(lines: list[Array], phi: float, width: float, *, widening: bool = True
     threads = pv.PolyData(points_to_cartesian(points), lines=cells)
     share = 0.35 + 0.65 * points[:, 0] / end if widening else np.ones(len(points))
     threads.point_data["width"] = width * share
+    if scalars is not None:
+        name, values = scalars
+        threads.point_data[name] = np.concatenate([values[n] for n in kept])
     return threads.tube(scalars="width", absolute=True, n_sides=12)

@@ -9,6 +9,7 @@ import numpy as np
 from fieldviz.scenes.composition import ColourBar, Composition, Swatches
 from fieldviz.scenes.description import FluxSheets
 from fieldviz.scenes.display_grid import DisplayGrid, Window, make_display_grid
+from fieldviz.scenes.field_lines import tubes
 from fieldviz.scenes.from_data import FieldScale, round_figure, sheet_levels
 from fieldviz.scenes.ingredients import (
     DensityScale,
@@ -17,6 +18,7 @@ from fieldviz.scenes.ingredients import (
     density_bar,
     field_label,
 )
+from fieldviz.scenes.sheet_lines import SheetLines, sheet_lines
 from fieldviz.scenes.stage import Layer, Material
 from fieldviz.scenes.surfaces import contour, face, merged
 from fieldviz.scenes.theme import Theme
@@ -27,6 +29,8 @@ from fieldviz.wedge.snapshot import Snapshot
 __all__ = ["compose_flux_sheets"]
 
 _NEEDED = ("density", "magnetic_r", "magnetic_theta")
+_WITHOUT_LINES = "where the vertical field gathers, and the disc it threads"
+_LINE_WIDTH = 0.0042  # of the outer radius
 _FADE_SHARE = 0.2  # of the outer radius over which the disc's surface fades away
 
 
@@ -60,15 +64,21 @@ def compose_flux_sheets(
     grid, field = add_vertical_field(grid, scene.field_exponent)
     levels = _levels(scene, field)
     layers = _layers(grid, density, levels, scene.inner_height_limit, theme)
+    threads = sheet_lines(
+        snapshot, grid, field, levels[0], scene.line_count, scene.line_height_limit
+    )
+    if threads.places:
+        layers.append(_line_layer(grid, threads, theme))
     span = float(grid.phi[-1] - grid.phi[0])
     return Composition(
         title="Flux sheets",
-        subtitle="where the vertical field gathers, and the disc it threads",
+        subtitle="and the field lines that thread them" if threads.places else _WITHOUT_LINES,
         layers=layers,
         azimuth=_opening_middle(grid) + np.radians(scene.camera_azimuth),
         height=np.radians(scene.camera_height),
-        legends=_legends(density, field, levels, theme),
-        caption=_caption(snapshot.grid, scene, grid, field, layers, span),
+        legends=_legends(density, field, levels, theme, bool(threads.places)),
+        caption=_caption(snapshot.grid, scene, grid, field, layers, span)
+        + _line_phrases(scene, threads),
         scale_bar=True,
         drawn={
             "outer_level": levels[0],
@@ -78,6 +88,8 @@ def compose_flux_sheets(
             "density_exponent": density.exponent,
             "density_limits": list(density.limits),
             "shown_azimuth": float(np.degrees(span)),
+            "sheet_radii": threads.radii,
+            "lines": len(threads.places),
         },
     )
 
@@ -129,6 +141,25 @@ def _layers(
         Layer("outer sheets", outer_mesh, _sheet(theme, theme.outer_share, theme.outer_opacity)),
         Layer("inner sheets", inner_mesh, _sheet(theme, theme.inner_share, 1.0)),
     ]
+
+
+def _line_layer(grid: DisplayGrid, threads: SheetLines, theme: Theme) -> Layer:
+    mesh = tubes(threads.places, _LINE_WIDTH * float(grid.r[-1]), scalars=("pitch", threads.pitch))
+    material = Material(
+        scalars="pitch",
+        colour_map=theme.colour_map("signed_field_on_lines"),
+        limits=(-1.0, 1.0),
+        ambient=0.22,
+        specular=0.45,
+        specular_power=30.0,
+    )
+    return Layer("field lines", mesh, material)
+
+
+def _line_phrases(scene: FluxSheets, threads: SheetLines) -> list[str]:
+    if threads.places:
+        return [f"{len(threads.places)} lines from the sheets' ridges, smoothed over 2.5 cells"]
+    return ["no field lines: no sheet or no azimuthal field"] if scene.line_count else []
 
 
 def _sheet(theme: Theme, share: float, opacity: float) -> Material:
@@ -192,12 +223,23 @@ def _inner_sheets(grid: DisplayGrid, level: float, density: DensityScale, closed
 
 
 def _legends(
-    density: DensityScale, field: FieldScale, levels: tuple[float, float], theme: Theme
+    density: DensityScale,
+    field: FieldScale,
+    levels: tuple[float, float],
+    theme: Theme,
+    with_lines: bool,
 ) -> list[ColourBar | Swatches]:
     factor, label = field_label(field, levels[1])
     texts = [number_text(level / factor) for level in levels]
+    pitch = ColourBar(
+        r"field line: $B_\phi/|B|$",
+        theme.colour_map("signed_field_on_lines"),
+        (-1.0, 1.0),
+        [(value, number_text(value)) for value in (-1.0, -0.5, 0.0, 0.5, 1.0)],
+    )
     return [
         density_bar(theme, density, r"cut face: $\rho$ [code units]"),
+        *([pitch] if with_lines else []),
         Swatches(
             f"surfaces of {label}",
             [("outer sheets", None, texts[0]), ("inner sheets", "outer sheets", texts[1])],

@@ -60,7 +60,7 @@ class Theme:
     maps: dict[str, tuple[str, float, float]]
 
     def colour_map(self, quantity: str) -> Colormap:
-        """Colour map of a quantity: "density", "vertical_field"."""
+        """Colour map of a quantity: "density", "vertical_field", "signed_field_on_lines"."""
         name, first, last = self.maps[quantity]
         colours = getattr(_maps, name)(np.linspace(first, last, 256))
         return ListedColormap(colours, name=f"{quantity} ({self.name})")
@@ -92,7 +92,11 @@ _DARK = Theme(
     outer_share=0.50,
     inner_share=0.80,
     outer_opacity=0.32,
-    maps={"density": ("oslo", 0.07, 0.96), "vertical_field": ("lajolla", 0.0, 1.0)},
+    maps={
+        "density": ("oslo", 0.07, 0.96),
+        "vertical_field": ("lajolla", 0.0, 1.0),
+        "signed_field_on_lines": ("vik", 0.17, 0.83),
+    },
 )
 
 _LIGHT = Theme(
@@ -111,7 +115,11 @@ _LIGHT = Theme(
     outer_share=0.30,
     inner_share=0.62,
     outer_opacity=0.34,
-    maps={"density": ("oslo_r", 0.03, 0.92), "vertical_field": ("lajolla_r", 0.0, 1.0)},
+    maps={
+        "density": ("oslo_r", 0.03, 0.92),
+        "vertical_field": ("lajolla_r", 0.0, 1.0),
+        "signed_field_on_lines": ("vik", 0.08, 0.92),
+    },
 )
 
 THEMES: dict[str, Theme] = {theme.name: theme for theme in (_DARK, _LIGHT)}

@@ -8,14 +8,14 @@ from contextlib import contextmanager
 from pathlib import Path
 
 from vtkmodules.vtkCommonCore import vtkLogger, vtkOutputWindow, vtkStringOutputWindow, vtkVersion
-from vtkmodules.vtkCommonDataModel import vtkCompositeDataSet, vtkMultiBlockDataSet
-from vtkmodules.vtkIOXML import vtkXMLMultiBlockDataWriter
+from vtkmodules.vtkCommonDataModel import vtkCompositeDataSet, vtkMultiBlockDataSet, vtkPolyData
+from vtkmodules.vtkIOXML import vtkXMLMultiBlockDataWriter, vtkXMLPolyDataWriter
 
 from fieldviz.errors import FieldvizError, SnapshotFileError
 from fieldviz.output import whole_file, whole_folder
 from fieldviz.snapshots.hdf5_access import open_hdf5
 
-__all__ = ["SUFFIXES", "write_vtk"]
+__all__ = ["SUFFIXES", "write_poly_data", "write_vtk"]
 
 SUFFIXES = (".vtm", ".vtkhdf")
 
@@ -73,6 +73,19 @@ def _write_xml(path: Path, data: vtkMultiBlockDataSet) -> list[Path]:
         pieces.rmdir()
         index.replace(temporary)
     return [path, parts]
+
+
+def write_poly_data(path: str | Path, data: vtkPolyData) -> None:
+    """Write poly data as VTK's XML (.vtp); the name appears once all is written."""
+    path = Path(path)
+    with whole_file(path) as temporary, _quiet_vtk():
+        writer = vtkXMLPolyDataWriter()
+        writer.SetFileName(str(temporary))
+        writer.SetInputData(data)
+        writer.SetDataModeToAppended()
+        writer.EncodeAppendedDataOff()
+        if not writer.Write() or writer.GetErrorCode() or not _is_whole(temporary):
+            raise SnapshotFileError(_failed(path))
 
 
 def _is_whole(piece: Path) -> bool:

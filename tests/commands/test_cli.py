@@ -26,7 +26,7 @@ def disc_file(tmp_path_factory):
     return path
 
 
-COMMANDS = ["sample", "inspect", "render", "symmetry", "export"]
+COMMANDS = ["sample", "inspect", "render", "symmetry", "lines", "export"]
 
 
 @pytest.mark.parametrize("command", COMMANDS)

@@ -6,7 +6,12 @@ import numpy as np
 import pytest
 
 import fieldviz as fv
-from fieldviz.scenes.field_lines import equal_flux_levels, poloidal_lines, tubes
+from fieldviz.scenes.field_lines import (
+    equal_flux_levels,
+    in_plane,
+    poloidal_lines,
+    tubes,
+)
 
 
 @pytest.mark.parametrize("options", [{}, {"wind": "odd"}, {"levels": 2, "shape": (4, 64, 80)}])
@@ -30,8 +35,8 @@ def test_levels_have_equal_steps_and_stay_inside():
 
 def test_tubes_stand_in_their_plane():
     line = np.column_stack([np.linspace(1, 2, 9), np.full(9, 1.2)])
-    mesh = tubes([line], 0.7, 0.01)
+    mesh = tubes(in_plane([line], 0.7), 0.01)
     x, y, _ = np.asarray(mesh.points).T
     across = -x * np.sin(0.7) + y * np.cos(0.7)
     assert 0.004 < np.abs(across).max() <= 0.0101
-    assert tubes([], 0.7, 0.01).n_points == 0
+    assert tubes([], 0.01).n_points == 0

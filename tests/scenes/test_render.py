@@ -114,7 +114,7 @@ def test_the_legend_shows_the_inner_sheets_as_they_look(theme):
     changed[290:] = False
     changed[:45] = False
     on_screen = image[changed]
-    inner = next(t for t in page.texts if t.text == composition.legends[1].entries[1][2])
+    inner = next(t for t in page.texts if t.text == composition.legends[-1].entries[1][2])
     x, y = int(inner.box.left), int((inner.box.top + inner.box.bottom) / 2)
     swatch = image[y - 2 : y + 3, x - 20 : x - 6].reshape(-1, 3)
     # Every colour of the swatch occurs among the lit, veiled colours of the picture.

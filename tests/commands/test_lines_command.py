@@ -1,0 +1,104 @@
+"""`fieldviz lines` as a user meets it."""
+
+import json
+
+import numpy as np
+import pytest
+import pyvista as pv
+
+import fieldviz as fv
+from fieldviz.cli import main
+
+
+def call(capsys, *arguments):
+    with pytest.raises(SystemExit) as stop:
+        main([str(argument) for argument in arguments])
+    out, err = capsys.readouterr()
+    return stop.value.code, out, err
+
+
+@pytest.fixture(scope="module")
+def disc_file(tmp_path_factory):
+    path = tmp_path_factory.mktemp("disc") / "disc.h5"
+    fv.write_snapshot(path, fv.demo_disc(shape=(4, 64, 64), precision="single"))
+    return path
+
+
+@pytest.mark.parametrize("suffix", [".vtp", ".csv", ".npz"])
+def test_every_output_holds_the_same_lines(capsys, tmp_path, disc_file, suffix):
+    target = tmp_path / f"lines{suffix}"
+    code, out, _ = call(
+        capsys, "lines", disc_file, "--count", 12, "-o", target, "--sample", "density", "--json"
+    )
+    assert code == 0
+    summary = json.loads(out)
+    assert summary["lines"] == 12
+    assert summary["interpolation"] == "flux"
+    assert sum(end["lines"] for end in summary["ends"]) == 12
+    disc = fv.read_snapshot(disc_file)
+    truth = fv.trace_lines(
+        disc, "magnetic", fv.equal_flux_seeds(disc, 12), interpolation="flux", sample=["density"]
+    )
+    assert summary["points"] == len(truth.spherical)
+    if suffix == ".vtp":
+        points, density = np.asarray(pv.read(target).points), pv.read(target)["density"]
+    elif suffix == ".csv":
+        table = np.genfromtxt(target, delimiter=",", names=True)
+        points = np.stack([table[n] for n in "xyz"], axis=-1)
+        density = table["density"]
+        assert table["line"][-1] == 11
+    else:
+        with np.load(target) as stored:
+            points, density = stored["points"], stored["field_density"]
+            np.testing.assert_array_equal(stored["offsets"], truth.offsets)
+    np.testing.assert_allclose(points, truth.points, rtol=1e-15)
+    np.testing.assert_allclose(density, truth.value("density"), rtol=1e-6)
+
+
+@pytest.mark.parametrize(
+    ("options", "phrase"),
+    [
+        (["--seeds", "sheets", "--radii", 1.4, 3.0], "sheets seeds"),
+        (["--seeds", "wind", "--field", "velocity", "--direction", "forward"], "not traced"),
+        (["--seeds", "even-area", "--interpolation", "linear"], "linear interpolation"),
+    ],
+)
+def test_kinds_of_seeds(capsys, disc_file, options, phrase):
+    code, out, _ = call(capsys, "lines", disc_file, "--count", 10, *options)
+    assert code == 0
+    assert "10 lines" in out
+    assert phrase in out
+
+
+def test_given_points(capsys, tmp_path, disc_file):
+    points = tmp_path / "points.csv"
+    points.write_text("# r, theta, phi\n2.0,1.57,0.1\n9.0,1.57,0.1\n")
+    code, out, _ = call(capsys, "lines", disc_file, "--seeds", "points", "--points", points)
+    assert code == 0
+    assert "2 lines" in out
+    assert "seed outside" in out
+
+
+@pytest.mark.parametrize(
+    "options",
+    [
+        ["--count", 0],
+        ["--count", 100_000_000],
+        ["--tolerance", 0, "--interpolation", "linear"],
+        ["--seeds", "sheets"],
+        ["--seeds", "points"],
+        ["--seeds", "points", "--points", "nowhere.csv"],
+        ["--sample", "temperature"],
+        ["--field", "velocity", "--interpolation", "flux"],
+        ["-o", "lines.txt"],
+        ["-o", "nowhere/lines.vtp"],
+    ],
+)
+def test_bad_input_is_one_line_and_exit_1(capsys, tmp_path, monkeypatch, disc_file, options):
+    monkeypatch.chdir(tmp_path)
+    code, out, err = call(capsys, "lines", disc_file, *options)
+    assert code == 1
+    assert out == ""
+    assert err.startswith("fieldviz: Cannot")
+    assert err.count("\n") == 1
+    assert not list(tmp_path.iterdir())
