@@ -110,7 +110,8 @@ def _speed(flux, xi, r, theta, cube, step, width):
     volume = cube / 3.0 * step * width
     b_r = (flux[0, 0] + (flux[0, 1] - flux[0, 0]) * xi[0]) / (r * r * step * width)
     b_t = (flux[1, 0] + (flux[1, 1] - flux[1, 0]) * xi[1]) * 3.0 * r
-    b_t /= cube * max(np.sin(theta), 1e-300) * width
+    # Next to the axis theta itself is rounded to 1e-8, and the flux falls with its square.
+    b_t /= cube * max(np.sin(theta), 1e-8) * width
     b_p = (flux[2, 0] + (flux[2, 1] - flux[2, 0]) * xi[2]) * 3.0 * r * np.sin(theta) / (cube * step)
     return volume * np.sqrt(b_r * b_r + b_t * b_t + b_p * b_p)
 
@@ -209,7 +210,7 @@ def _follow(
         if travel[3] > 6.0:
             return count, steps, WEAK  # Faces of neighbours that point at each other.
         if time > 0.0:
-            # Near a standstill speed grows exponentially: parts of equal time then differ in length.
+            # Speed grows exponentially: parts of equal time differ in length by up to e.
             parts = 1.0
             for axis in range(3):
                 moved = _moved(flux[axis, 0], flux[axis, 1], xi[axis], time)
@@ -241,7 +242,7 @@ def _follow(
                 if travel[2] > _LEFT_CELLS and far < _CLOSED_CELLS * size and reason == GOING_ON:
                     reason = CLOSED
                     points[count] = seed
-                    points[count, 2] += turns * period
+                    points[count, 2] += turns
                     travel[0] -= (1.0 - share) * gained
                 travel[2] = max(travel[2], _past_seed(spot, spot, seed, period)[0] / size)
                 points[count, 2] += travel[1] * period
@@ -260,7 +261,7 @@ def _follow(
 
 @njit(cache=True, nogil=True, inline="always")
 def _past_seed(p, q, seed, period):
-    """Nearest to the seed on the straight line from p to q: distance over r, share, turns."""
+    """Nearest to the seed on the straight line from p to q: distance over r, share, azimuth on."""
     sine, r = np.sin(seed[1]), seed[0]
     turns = period * np.floor((p[2] - seed[2]) / period + 0.5)
     ax, at, ap = (p[0] - r) / r, p[1] - seed[1], (p[2] - seed[2] - turns) * sine

@@ -21,6 +21,7 @@ WEAK, NO_DATA, LENGTH, CLOSED, STEPS, OUTSIDE = range(6, 12)
 
 _SAFETY = 0.9
 _SMALLEST_SHARE = 1e-7  # of a cell: a step that shrinks below it ends the line
+_SAME_POINT = 1e-14
 _CLOSED_CELLS = 1e-3
 # A line must have been this far from its seed before it can close. A ring of one azimuth cell gets
 # half a cell away.
@@ -53,12 +54,15 @@ def _direction(field, x_c, theta_c, phi_c, x, theta, phi, cell):
     w00, w01, w10, w11 = (1 - wk) * (1 - wj), (1 - wk) * wj, wk * (1 - wj), wk * wj
     b_r = b_t = b_p = 0.0
     for step in range(2):
-        wi_here = wi if step else 1 - wi
-        a, b = field[k, j, i + step], field[k, j + 1, i + step]
-        c, d = field[k + 1, j, i + step], field[k + 1, j + 1, i + step]
-        b_r += wi_here * (w00 * a[0] + w01 * b[0] + w10 * c[0] + w11 * d[0])
-        b_t += wi_here * (w00 * a[1] + w01 * b[1] + w10 * c[1] + w11 * d[1])
-        b_p += wi_here * (w00 * a[2] + w01 * b[2] + w10 * c[2] + w11 * d[2])
+        share, n = (wi, i + 1) if step else (1 - wi, i)
+        s00, s01, s10, s11 = share * w00, share * w01, share * w10, share * w11
+        # Single elements: views of rows would be counted, which takes as long as the sums.
+        b_r += s00 * field[k, j, n, 0] + s01 * field[k, j + 1, n, 0]
+        b_r += s10 * field[k + 1, j, n, 0] + s11 * field[k + 1, j + 1, n, 0]
+        b_t += s00 * field[k, j, n, 1] + s01 * field[k, j + 1, n, 1]
+        b_t += s10 * field[k + 1, j, n, 1] + s11 * field[k + 1, j + 1, n, 1]
+        b_p += s00 * field[k, j, n, 2] + s01 * field[k, j + 1, n, 2]
+        b_p += s10 * field[k + 1, j, n, 2] + s11 * field[k + 1, j + 1, n, 2]
     size = np.sqrt(b_r * b_r + b_t * b_t + b_p * b_p)
     if size > 0.0:
         b_r, b_t, b_p = b_r / size, b_t / size, b_p / size
@@ -110,7 +114,7 @@ def _axis_or(wall, theta):
 
 @njit(cache=True, nogil=True, inline="always")
 def _near_seed(p, q, seed, period):
-    """Nearest to the seed on the straight line from p to q: distance over r, share, turns."""
+    """Nearest to the seed on the straight line from p to q: distance over r, share, azimuth on."""
     sine = np.sin(seed[1])
     turns = period * np.floor((p[2] - seed[2]) / period + 0.5)
     ax, at, ap = p[0] - seed[0], p[1] - seed[1], (p[2] - seed[2] - turns) * sine
@@ -125,7 +129,7 @@ def _near_seed(p, q, seed, period):
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def _curve_near_seed(p, slope0, q, slope1, h, seed, period):
-    """Nearest to the seed on the cubic of a step, in pieces: distance over r, share, turns."""
+    """Nearest to the seed on the cubic of a step, in pieces; what `_near_seed` gives."""
     here, there = p.copy(), np.empty(3)
     nearest, at, turns = np.inf, 0.0, 0.0
     for piece in range(_CURVE_PIECES):
@@ -281,16 +285,17 @@ def _follow(
             distance, part, turns = _curve_near_seed(p, way_in, q, way_out, h, seed, period)
         if may_close and distance < _CLOSED_CELLS * width:
             reason = CLOSED
-            q[0], q[1], q[2] = seed[0], seed[1], seed[2] + turns * period
+            q[0], q[1], q[2] = seed[0], seed[1], seed[2] + turns
             travel[0] -= (1.0 - part) * gained
         travel[2] = max(travel[2], _near_seed(q, q, seed, period)[0] / width)
 
-        moved = q[0] != x or q[1] != theta or q[2] != phi
-        x, theta, phi = q[0], q[1], q[2]
-        if moved:
-            points[count, 0], points[count, 1] = x, theta
-            points[count, 2] = phi + travel[3] * period
+        # A wall met once more by rounding only moves the last point onto it.
+        if abs(q[0] - x) + abs(q[1] - theta) + abs(q[2] - phi) > _SAME_POINT:
             count += 1
+        x, theta, phi = q[0], q[1], q[2]
+        if count > 0:
+            points[count - 1, 0], points[count - 1, 1] = x, theta
+            points[count - 1, 2] = phi + travel[3] * period
         if phi < first:
             phi += period
             travel[3] -= 1.0
