@@ -41,7 +41,7 @@ class Row:
 
     @property
     def met(self) -> bool:
-        return self.ratio <= self.goal
+        return bool(self.ratio <= self.goal)
 
 
 def best_times(*works: Callable[[], object], repeats: int = 7) -> list[float]:

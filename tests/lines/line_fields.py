@@ -35,6 +35,16 @@ def formula_snapshot(b_r, b_theta, b_phi, *, r=R, theta=THETA, phi=PHI, dtype=fl
     return fv.Snapshot.from_arrays(r, theta, phi, cells=cells, faces=faces)
 
 
+def vertical(strength=1.0, **grid):
+    """Uniform B_z."""
+    return formula_snapshot(
+        lambda r, t, p: strength * np.cos(t) + 0 * r + 0 * p,
+        lambda r, t, p: -strength * np.sin(t) + 0 * r + 0 * p,
+        0.0,
+        **grid,
+    )
+
+
 def psi_snapshot(psi, *, r, theta, phi, toroidal=0.0):
     """Faces without divergence from a flux function (r, theta), and a constant B_phi."""
     nodes, step = psi(r, theta[:, None]), np.diff(phi)[:, None, None]
