@@ -62,12 +62,15 @@ def _check_readable(path: Path) -> None:
         raise SnapshotFileError(f"{expected} no permission to read it; ask its owner.")
     if path.stat().st_size == 0:
         raise SnapshotFileError(f"{expected} an empty file; it was never written or lost its data.")
-    if not h5py.is_hdf5(path):
-        raise SnapshotFileError(f"{expected} another kind of file; convert it to HDF5 first.")
 
 
 def _reason(path: Path, error: Exception) -> str:
     words = str(error).splitlines()[0] if str(error) else type(error).__name__
+    if "signature not found" in words:
+        return (
+            f"Cannot read {path}: expected an HDF5 file, got another kind of file; "
+            "convert it to HDF5 first."
+        )
     if "truncated" in words:
         return (
             f"Cannot read {path}: expected a whole HDF5 file, got a truncated one; "
