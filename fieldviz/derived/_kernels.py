@@ -13,6 +13,8 @@ from __future__ import annotations
 import numpy as np
 from numba import njit, prange
 
+from fieldviz.wedge._kernels import _interval
+
 # Rows of colatitude that one task works on.
 _TILE = 64
 
@@ -179,19 +181,6 @@ def gradient_blocks(
                 along_theta[b, k, j, i] = per_r[b, i] * _across_theta(f, rows, w, k, i)
             for i in range(n_r):
                 along_phi[b, k, j, i] = per_r[b, i] * _across_phi(f, pages, v, j, i)
-
-
-@njit(cache=True, nogil=True)
-def _interval(lines, value):
-    """Index i with lines[i] <= value < lines[i + 1], clipped to the ends."""
-    low, high = 0, lines.shape[0] - 1
-    while high - low > 1:
-        middle = (low + high) // 2
-        if lines[middle] <= value:
-            low = middle
-        else:
-            high = middle
-    return low
 
 
 @njit(cache=True, nogil=True)

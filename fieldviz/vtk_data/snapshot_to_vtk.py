@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from functools import partial
 
 import numpy as np
 from vtkmodules.util.numpy_support import numpy_to_vtk
@@ -16,7 +17,8 @@ from vtkmodules.vtkCommonDataModel import (
 
 from fieldviz._version import __version__
 from fieldviz.vtk_data.names import GHOSTS, LEVEL, VECTORS, level_name
-from fieldviz.wedge.halo import halo, halo_grid
+from fieldviz.wedge.halo import halo as haloed
+from fieldviz.wedge.halo import halo_grid
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
 
@@ -63,7 +65,7 @@ def to_vtk(
     """
     names = tuple(snapshot.cell_names if fields is None else fields)
     snapshot.require("convert to VTK", *names)
-    values = _haloed_values(snapshot) if halo else _plain_values(snapshot)
+    values = _read_once(partial(haloed, snapshot) if halo else snapshot.cell)
     grid = snapshot.grid
     assert grid.level is not None
     tree = vtkMultiBlockDataSet()
@@ -79,23 +81,13 @@ def to_vtk(
     return tree
 
 
-def _plain_values(snapshot: Snapshot) -> CellValues:
+def _read_once(read: Callable[[str], Array]) -> CellValues:
+    """Blocks of fields, each field read or given its halo when its first block is asked for."""
     kept: dict[str, Array] = {}
 
     def values(name: str, block: int) -> Array:
         if name not in kept:
-            kept[name] = snapshot.cell(name)
-        return kept[name][block]
-
-    return values
-
-
-def _haloed_values(snapshot: Snapshot) -> CellValues:
-    kept: dict[str, Array] = {}
-
-    def values(name: str, block: int) -> Array:
-        if name not in kept:
-            kept[name] = halo(snapshot, name)
+            kept[name] = read(name)
         return kept[name][block]
 
     return values

@@ -7,16 +7,10 @@ import sys
 import h5py
 import numpy as np
 import pytest
+from command_calls import call
 
 import fieldviz as fv
-from fieldviz.cli import app, main
-
-
-def call(capsys, *arguments):
-    with pytest.raises(SystemExit) as stop:
-        main([str(argument) for argument in arguments])
-    out, err = capsys.readouterr()
-    return stop.value.code, out, err
+from fieldviz.cli import app
 
 
 @pytest.fixture(scope="module")

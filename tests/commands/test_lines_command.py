@@ -5,16 +5,9 @@ import json
 import numpy as np
 import pytest
 import pyvista as pv
+from command_calls import call
 
 import fieldviz as fv
-from fieldviz.cli import main
-
-
-def call(capsys, *arguments):
-    with pytest.raises(SystemExit) as stop:
-        main([str(argument) for argument in arguments])
-    out, err = capsys.readouterr()
-    return stop.value.code, out, err
 
 
 @pytest.fixture(scope="module")
