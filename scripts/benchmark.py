@@ -25,6 +25,7 @@ from numba import njit, prange
 import fieldviz as fv
 from fieldviz.wedge.coordinates import points_to_cartesian, vectors_to_cartesian
 from fieldviz.wedge.fields import MAGNETIC
+from fieldviz.wedge.halo import halo, halo_grid
 
 
 @dataclass
@@ -237,28 +238,49 @@ def true_ends(seeds: np.ndarray) -> np.ndarray:
     return points_to_cartesian(path.y[:, -1].reshape(3, -1).T)
 
 
-def vtk_tracer(snapshot: fv.Snapshot, seeds: np.ndarray) -> Any:
-    """vtkStreamTracer, RK45, on a curvilinear grid of cell centres with Cartesian vectors."""
+def vtk_grid(snapshot: fv.Snapshot) -> Any:
+    """Curvilinear grids of cell centres with Cartesian vectors, one a block.
+
+    More than one block: each with its ghost layer, so that lines need not stop between blocks.
+    """
     from vtkmodules.util.numpy_support import numpy_to_vtk
     from vtkmodules.vtkCommonCore import vtkPoints
-    from vtkmodules.vtkCommonDataModel import vtkPolyData, vtkStructuredGrid
+    from vtkmodules.vtkCommonDataModel import vtkMultiBlockDataSet, vtkStructuredGrid
+
+    whole = vtkMultiBlockDataSet()
+    around = halo_grid(snapshot.grid)
+    single = snapshot.grid.n_blocks == 1
+    fields = [snapshot.cell(part) if single else halo(snapshot, part) for part in MAGNETIC]
+    for block in range(snapshot.grid.n_blocks):
+        axes = around.r[block], around.theta[block], around.phi[block]
+        if single:
+            axes = snapshot.grid.cell_centres(0)
+        at = np.stack(np.meshgrid(*axes[::-1], indexing="ij")[::-1], axis=-1).reshape(-1, 3)
+        grid, held = vtkStructuredGrid(), vtkPoints()
+        grid.SetDimensions(*(len(axis) for axis in axes))
+        held.SetData(numpy_to_vtk(points_to_cartesian(at), deep=True))
+        grid.SetPoints(held)
+        parts = np.stack([field[block].ravel() for field in fields], axis=-1)
+        vectors = numpy_to_vtk(vectors_to_cartesian(parts, at), deep=True)
+        vectors.SetName("B")
+        grid.GetPointData().SetVectors(vectors)
+        whole.SetBlock(block, grid)
+    return whole.GetBlock(0) if single else whole
+
+
+def vtk_tracer(snapshot: fv.Snapshot, seeds: np.ndarray) -> Any:
+    """vtkStreamTracer, RK45, from the same seeds over the same span."""
+    from vtkmodules.util.numpy_support import numpy_to_vtk
+    from vtkmodules.vtkCommonCore import vtkPoints
+    from vtkmodules.vtkCommonDataModel import vtkPolyData
     from vtkmodules.vtkFiltersFlowPaths import vtkStreamTracer
 
-    r, theta, phi = snapshot.grid.cell_centres(0)
-    at = np.stack(np.meshgrid(phi, theta, r, indexing="ij")[::-1], axis=-1).reshape(-1, 3)
-    parts = np.stack([snapshot.cell(name)[0].ravel() for name in MAGNETIC], axis=-1)
-    kept = [points_to_cartesian(at), vectors_to_cartesian(parts, at), points_to_cartesian(seeds)]
-    grid, source = vtkStructuredGrid(), vtkPolyData()
-    grid.SetDimensions(len(r), len(theta), len(phi))
-    for data, points in ((grid, kept[0]), (source, kept[2])):
-        held = vtkPoints()
-        held.SetData(numpy_to_vtk(points, deep=True))
-        data.SetPoints(held)
-    vectors = numpy_to_vtk(kept[1], deep=True)
-    vectors.SetName("B")
-    grid.GetPointData().SetVectors(vectors)
+    source, held = vtkPolyData(), vtkPoints()
+    held.SetData(numpy_to_vtk(points_to_cartesian(seeds), deep=True))
+    source.SetPoints(held)
     tracer = vtkStreamTracer()
-    tracer.SetInputData(grid)
+    tracer.SetInputData(vtk_grid(snapshot))
+    tracer.SetInputArrayToProcess(0, 0, 0, 0, "B")
     tracer.SetSourceData(source)
     tracer.SetIntegratorTypeToRungeKutta45()
     tracer.SetIntegrationDirectionToForward()
@@ -288,8 +310,9 @@ def vtk_ends(tracer: Any) -> tuple[np.ndarray, int]:
     return ends, len(points)
 
 
-def line_rows(count: int = 5000) -> list[Row]:
-    snapshot, seeds = fv.demo_disc(shape=(24, 128, 96)), line_seeds(count)
+def line_rows(snapshot: fv.Snapshot, mesh: str, count: int = 5000, repeats: int = 3) -> list[Row]:
+    """Lines of random seeds against VTK's; setting up the field or the search is in both times."""
+    seeds = line_seeds(count)
     tracer, truth = vtk_tracer(snapshot, seeds), true_ends(seeds)
     ends, points = vtk_ends(tracer)
 
@@ -306,22 +329,55 @@ def line_rows(count: int = 5000) -> list[Row]:
 
     lines, flux = ours(), ours("flux")
     assert all(end == "length" for _, end in lines.end_reason + flux.end_reason)
-    times = best_times(ours, lambda: ours("flux"), lambda: vtk_ends(tracer), repeats=3)
+    times = best_times(ours, lambda: ours("flux"), lambda: vtk_ends(tracer), repeats=repeats)
     per_point = [
         t / n * 1e6
         for t, n in zip(times, (len(lines.points), len(flux.points), points), strict=True)
     ]
-    at = lines.offsets[1:] - 1, flux.offsets[1:] - 1
-    return [
-        Row("a point of a line, linear, against vtkStreamTracer", *per_point[::2], "us", 0.01),
-        Row("a point of a line, flux, against vtkStreamTracer", *per_point[1:], "us", 0.01),
-        Row("a whole line, linear, against vtkStreamTracer", times[0] / count * 1e6,
-            times[2] / count * 1e6, "us", 1.0),
-        Row("rms end error, linear, against vtkStreamTracer's", rms(lines.points[at[0]]),
-            rms(ends), "r0", 1.01),
-        Row("rms end error, flux, against vtkStreamTracer's", rms(flux.points[at[1]]),
-            rms(ends), "r0", 1.01),
-    ]  # fmt: skip
+    per_line = [t / count * 1e6 for t in times]
+    at, flux_at = lines.offsets[1:] - 1, flux.offsets[1:] - 1
+    errors = [rms(found) for found in (lines.points[at], flux.points[flux_at], ends)]
+    rows = []
+    for n, kind in enumerate(("linear", "flux")):
+        what = f"{mesh}, {kind}, against vtkStreamTracer"
+        rows += [
+            Row(f"a point of a line, {what}", per_point[n], per_point[2], "us", 0.01),
+            Row(f"a whole line, {what}", per_line[n], per_line[2], "us", 1.0),
+            Row(f"rms end error, {what}", errors[n], errors[2], "r0", 1.01),
+        ]
+    return rows
+
+
+LINE_MEMORY_PROBE = """
+import resource, sys, numpy as np, fieldviz as fv
+from fieldviz.wedge.fields import MAGNETIC
+snapshot = fv.demo_disc(shape=(48, 128, 192), precision="single")
+def peak():
+    return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
+seeds = fv.cone_seeds(snapshot, np.pi / 2, ({count} // 100, 100))
+fv.trace_lines(snapshot, "magnetic", seeds[:4], interpolation="{interpolation}")
+for name in MAGNETIC:
+    snapshot.cell(name)
+before = peak()
+lines = fv.trace_lines(snapshot, "magnetic", seeds, interpolation="{interpolation}")
+held = lines.spherical.nbytes + lines.offsets.nbytes
+if "{interpolation}" == "linear":
+    held += 12 * 50 * 130 * 194  # three components in single precision, ghosts included
+print(peak() - before, held / 2**20)
+"""
+
+
+def line_memory_rows(count: int = 10_000) -> list[Row]:
+    """Peak above the snapshot against the points of the lines and the field with its ghosts."""
+    rows = []
+    for interpolation in ("linear", "flux"):
+        code = LINE_MEMORY_PROBE.format(count=count, interpolation=interpolation)
+        command = [sys.executable, "-c", code]
+        done = subprocess.run(command, capture_output=True, text=True, check=True)
+        added, lines = (float(word) for word in done.stdout.split())
+        what = f"memory added by {count} lines, {interpolation}, against points and field"
+        rows.append(Row(what, added, lines, "MB", 1.3))
+    return rows
 
 
 def measure(shape: tuple[int, int, int], folder: Path) -> list[Row]:
@@ -342,7 +398,9 @@ def measure(shape: tuple[int, int, int], folder: Path) -> list[Row]:
         memory_row(path),
         import_row(),
         *first_line_rows(),
-        *line_rows(),
+        *line_rows(snapshot, "one level"),
+        *line_rows(fv.demo_disc(shape=(24, 128, 96), levels=2), "two levels"),
+        *line_memory_rows(),
     ]
 
 

@@ -5,7 +5,9 @@ of a unit vector b is dx/dtau = b_r, dtheta/dtau = b_theta, dphi/dtau = b_phi/si
 scale. Each step uses the data of one block only, its ghost layer included, so the result does not
 depend on who holds the other blocks.
 
-Integrator: the embedded pair 5(4) of Dormand & Prince 1980 (coefficients from memory).
+Integrator: the embedded pair 3(2) of Bogacki & Shampine 1989 (coefficients from memory). No step is
+longer than half a cell, and at cell centres the interpolation has kinks: there a pair of higher
+order costs more and gains nothing.
 """
 
 from __future__ import annotations
@@ -15,12 +17,15 @@ from numba import njit, prange
 
 from fieldviz.wedge._kernels import _lattice_block, _wrapped
 
-# Why a line ends; the words are in fieldviz.lines.line_set.
+# Why a line ends; the words are in fieldviz.lines.reasons.
 GOING_ON, INNER, OUTER, UPPER, LOWER, AXIS = range(6)
 WEAK, NO_DATA, LENGTH, CLOSED, STEPS, OUTSIDE = range(6, 12)
 
 _SAFETY = 0.9
-_SMALLEST_SHARE = 1e-7  # of a cell: a step that shrinks below it ends the line
+# Roots near the cube root that the order asks for, on the careful side: grow by the fourth root of
+# the error, shrink by its square root. A cube root takes as long as a third of a step.
+_LARGEST_GROWTH = 5.0
+_SMALLEST_SHARE = 1e-7  # of the longest step: one that shrinks below it ends the line
 _SAME_POINT = 1e-14
 _CLOSED_CELLS = 1e-3
 # A line must have been this far from its seed before it can close. A ring of one azimuth cell gets
@@ -28,6 +33,9 @@ _CLOSED_CELLS = 1e-3
 _LEFT_CELLS = 0.25
 _CUT_ROUNDS = 8  # each brings the end of a line of limited length a step's length nearer
 _CURVE_CELLS, _CURVE_PIECES = 0.1, 8  # this near to the seed the bend of a step is looked at
+_SMALL_ANGLE = 0.1  # up to here the series of `_sine` is exact to rounding
+_ONE, _TWO, _THREE = np.uint64(1), np.uint64(2), np.uint64(3)
+_FUSED = {"contract"}  # a product and a sum in one instruction
 
 
 @njit(cache=True, nogil=True, inline="always")
@@ -41,40 +49,49 @@ def _hunt(centres, value, hint):
     return hint
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
-def _direction(field, x_c, theta_c, phi_c, x, theta, phi, cell):
-    """b_r, b_theta, b_phi/sin(theta) and |B| by trilinear interpolation in one block."""
-    i = _hunt(x_c, x, cell[0])
-    j = _hunt(theta_c, theta, cell[1])
-    k = _hunt(phi_c, phi, cell[2])
-    cell[0], cell[1], cell[2] = i, j, k
-    wi = (x - x_c[i]) / (x_c[i + 1] - x_c[i])
-    wj = (theta - theta_c[j]) / (theta_c[j + 1] - theta_c[j])
-    wk = (phi - phi_c[k]) / (phi_c[k + 1] - phi_c[k])
-    w00, w01, w10, w11 = (1 - wk) * (1 - wj), (1 - wk) * wj, wk * (1 - wj), wk * wj
-    b_r = b_t = b_p = 0.0
-    for step in range(2):
-        share, n = (wi, i + 1) if step else (1 - wi, i)
-        s00, s01, s10, s11 = share * w00, share * w01, share * w10, share * w11
-        # Single elements: views of rows would be counted, which takes as long as the sums.
-        b_r += s00 * field[k, j, n, 0] + s01 * field[k, j + 1, n, 0]
-        b_r += s10 * field[k + 1, j, n, 0] + s11 * field[k + 1, j + 1, n, 0]
-        b_t += s00 * field[k, j, n, 1] + s01 * field[k, j + 1, n, 1]
-        b_t += s10 * field[k + 1, j, n, 1] + s11 * field[k + 1, j + 1, n, 1]
-        b_p += s00 * field[k, j, n, 2] + s01 * field[k, j + 1, n, 2]
-        b_p += s10 * field[k + 1, j, n, 2] + s11 * field[k + 1, j + 1, n, 2]
-    size = np.sqrt(b_r * b_r + b_t * b_t + b_p * b_p)
-    if size > 0.0:
-        b_r, b_t, b_p = b_r / size, b_t / size, b_p / size
-    return b_r, b_t, b_p / np.sin(theta), size
+@njit(cache=True, nogil=True, inline="always")
+def _sine(theta, centre, sine, cosine):
+    """sin(theta) from a centre nearby: a call of the library takes as long as the eight corners."""
+    d = theta - centre
+    if abs(d) > _SMALL_ANGLE:
+        return np.sin(theta)
+    square = d * d
+    odd = d * (1 - square / 6 * (1 - square / 20 * (1 - square / 42)))
+    even = 1 - square / 2 * (1 - square / 12 * (1 - square / 30 * (1 - square / 56)))
+    return sine * even + cosine * odd
 
 
 @njit(cache=True, nogil=True, inline="always")
-def _cell_size(x_c, theta_c, phi_c, theta, cell):
-    """Smallest width of the present cell, in units of r."""
-    i, j, k = cell[0], cell[1], cell[2]
-    size = min(x_c[i + 1] - x_c[i], theta_c[j + 1] - theta_c[j])
-    return min(size, np.sin(theta) * (phi_c[k + 1] - phi_c[k]))
+def _between(field, at, low, high):
+    """One component between two neighbours in r."""
+    return low * field[at] + high * field[at + _THREE]
+
+
+@njit(cache=True, nogil=True, inline="always")
+def _direction(field, first, axes, x, theta, phi, i, j, k):
+    """b_r, b_theta, b_phi/sin(theta) and |B| by trilinear interpolation in one block; its cell."""
+    X, T, P, per_x, per_theta, per_phi, sines, cosines = axes
+    i, j, k = _hunt(X, x, i), _hunt(T, theta, j), _hunt(P, phi, k)
+    wi, wj, wk = (x - X[i]) * per_x[i], (theta - T[j]) * per_theta[j], (phi - P[k]) * per_phi[k]
+    w11 = wk * wj
+    w10, w01, vi = wk - w11, wj - w11, 1 - wi
+    w00 = 1 - wk - w01
+    # Unsigned places in the flat field: signed ones are asked whether they count from the end.
+    row = 3 * X.shape[0]
+    page = row * T.shape[0]
+    near = first + k * page + j * row + 3 * i
+    a, b = np.uint64(near), np.uint64(near + row)
+    c, d = np.uint64(near + page), np.uint64(near + page + row)
+    b_r = w00 * _between(field, a, vi, wi) + w01 * _between(field, b, vi, wi)
+    b_r += w10 * _between(field, c, vi, wi) + w11 * _between(field, d, vi, wi)
+    b_t = w00 * _between(field, a + _ONE, vi, wi) + w01 * _between(field, b + _ONE, vi, wi)
+    b_t += w10 * _between(field, c + _ONE, vi, wi) + w11 * _between(field, d + _ONE, vi, wi)
+    b_p = w00 * _between(field, a + _TWO, vi, wi) + w01 * _between(field, b + _TWO, vi, wi)
+    b_p += w10 * _between(field, c + _TWO, vi, wi) + w11 * _between(field, d + _TWO, vi, wi)
+    size = np.sqrt(b_r * b_r + b_t * b_t + b_p * b_p)
+    per_size = 1.0 / size if size > 0.0 else 0.0
+    per_sine = 1.0 / _sine(theta, T[j], sines[j], cosines[j])
+    return b_r * per_size, b_t * per_size, b_p * per_size * per_sine, size, i, j, k
 
 
 @njit(cache=True, nogil=True, inline="always")
@@ -85,8 +102,14 @@ def _hermite(p0, f0, p1, f1, h, s):
 
 
 @njit(cache=True, nogil=True, inline="always")
-def _arc(x0, slope0, x1, slope1, h, share):
-    """Arc length over a share of a step: Simpson's rule for ds = r dtau."""
+def _arc(r0, slope0, r1, slope1, h):
+    """Arc length of a step: the trapezium of ds = r dtau with its end correction, fourth order."""
+    return h * (0.5 * (r0 + r1) + h / 12 * (r0 * slope0 - r1 * slope1))
+
+
+@njit(cache=True, nogil=True)
+def _part_of_arc(x0, slope0, x1, slope1, h, share):
+    """Arc length over the first share of a step: Simpson's rule."""
     middle = np.exp(_hermite(x0, slope0, x1, slope1, h, 0.5 * share))
     end = np.exp(_hermite(x0, slope0, x1, slope1, h, share))
     return share * h * (np.exp(x0) + 4 * middle + end) / 6
@@ -112,7 +135,7 @@ def _axis_or(wall, theta):
     return AXIS if theta < 1e-12 or theta > np.pi - 1e-12 else wall
 
 
-@njit(cache=True, nogil=True, inline="always")
+@njit(cache=True, nogil=True, error_model="numpy")
 def _near_seed(p, q, seed, period):
     """Nearest to the seed on the straight line from p to q: distance over r, share, azimuth on."""
     sine = np.sin(seed[1])
@@ -128,214 +151,217 @@ def _near_seed(p, q, seed, period):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
+def _on_curve(p, slope0, q, slope1, h, s):
+    """The point at the share s of a step."""
+    return (
+        _hermite(p[0], slope0[0], q[0], slope1[0], h, s),
+        _hermite(p[1], slope0[1], q[1], slope1[1], h, s),
+        _hermite(p[2], slope0[2], q[2], slope1[2], h, s),
+    )
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
 def _curve_near_seed(p, slope0, q, slope1, h, seed, period):
     """Nearest to the seed on the cubic of a step, in pieces; what `_near_seed` gives."""
-    here, there = p.copy(), np.empty(3)
+    here = p
     nearest, at, turns = np.inf, 0.0, 0.0
     for piece in range(_CURVE_PIECES):
-        s = (piece + 1) / _CURVE_PIECES
-        for axis in range(3):
-            there[axis] = _hermite(p[axis], slope0[axis], q[axis], slope1[axis], h, s)
+        there = _on_curve(p, slope0, q, slope1, h, (piece + 1) / _CURVE_PIECES)
         distance, share, turned = _near_seed(here, there, seed, period)
         if distance < nearest:
             nearest, at, turns = distance, (piece + share) / _CURVE_PIECES, turned
-        here[:] = there
+        here = there
     return nearest, at, turns
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _step(F, X, T, P, x, theta, phi, ax, at, ap, h, sign, cell):
-    """One step of the embedded pair: end, slope and strength there, and the estimated error."""
-    bx, bt, bp, _ = _direction(
-        F, X, T, P, x + h / 5 * ax, theta + h / 5 * at, phi + h / 5 * ap, cell
+def _at_wall(p, slope0, q, slope1, h, limits):
+    """Where a step first meets a wall: reason, share of the step, the point on the wall."""
+    share, reason, end = 1.0, GOING_ON, q
+    for axis in range(2):
+        for side in range(2):
+            wall = limits[axis, side]
+            beyond = q[axis] > wall if side else q[axis] < wall
+            if not beyond:
+                continue
+            here = _crossing(p[axis], slope0[axis], q[axis], slope1[axis], h, wall)
+            if here < share or reason == GOING_ON:
+                share = here
+                point = _on_curve(p, slope0, q, slope1, h, share)
+                if axis == 0:
+                    reason, end = INNER + side, (wall, point[1], point[2])
+                else:
+                    reason, end = _axis_or(UPPER + side, wall), (point[0], wall, point[2])
+    return reason, share, end
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _ended(p, slope0, q, slope1, h, gained, limits, room, may_close, seed, width, period):
+    """Whether a step ends its line: reason, end point, arc length gained."""
+    reason, share, end = _at_wall(p, slope0, q, slope1, h, limits)
+    if reason != GOING_ON:
+        gained = _part_of_arc(p[0], slope0[0], q[0], slope1[0], h, share)
+    if gained > room:
+        for _ in range(_CUT_ROUNDS):
+            share *= room / gained
+            gained = _part_of_arc(p[0], slope0[0], q[0], slope1[0], h, share)
+        return LENGTH, _on_curve(p, slope0, q, slope1, h, share), room
+    if may_close and reason == GOING_ON:
+        distance, part, turns = _near_seed(p, q, seed, period)
+        if distance < _CURVE_CELLS * width:
+            distance, part, turns = _curve_near_seed(p, slope0, q, slope1, h, seed, period)
+        if distance < _CLOSED_CELLS * width:
+            return CLOSED, (seed[0], seed[1], seed[2] + turns), part * gained
+    return reason, end, gained
+
+
+@njit(cache=True, nogil=True, inline="always")
+def _step(field, first, axes, x, theta, phi, ax, at, ap, h, sign, i, j, k):
+    """One step of the embedded pair: end, slope and strength there, the estimated error, cell."""
+    half, later = 0.5 * h, 0.75 * h * sign
+    bx, bt, bp, _, i, j, k = _direction(
+        field, first, axes, x + half * ax, theta + half * at, phi + half * ap, i, j, k
     )
-    h2 = sign * h  # slopes from here on are of the field, not yet of the walk
-    cx, ct, cp, _ = _direction(
-        F, X, T, P,
-        x + 3 / 40 * h * ax + 9 / 40 * h2 * bx,
-        theta + 3 / 40 * h * at + 9 / 40 * h2 * bt,
-        phi + 3 / 40 * h * ap + 9 / 40 * h2 * bp, cell,
-    )  # fmt: skip
-    a1, a2, a3 = 44 / 45 * h, -56 / 15 * h2, 32 / 9 * h2
-    dx, dt, dp, _ = _direction(
-        F, X, T, P,
-        x + a1 * ax + a2 * bx + a3 * cx,
-        theta + a1 * at + a2 * bt + a3 * ct,
-        phi + a1 * ap + a2 * bp + a3 * cp, cell,
-    )  # fmt: skip
-    a1, a2, a3, a4 = 19372 / 6561 * h, -25360 / 2187 * h2, 64448 / 6561 * h2, -212 / 729 * h2
-    ex, et, ep, _ = _direction(
-        F, X, T, P,
-        x + a1 * ax + a2 * bx + a3 * cx + a4 * dx,
-        theta + a1 * at + a2 * bt + a3 * ct + a4 * dt,
-        phi + a1 * ap + a2 * bp + a3 * cp + a4 * dp, cell,
-    )  # fmt: skip
-    a1, a2, a3 = 9017 / 3168 * h, -355 / 33 * h2, 46732 / 5247 * h2
-    a4, a5 = 49 / 176 * h2, -5103 / 18656 * h2
-    gx, gt, gp, _ = _direction(
-        F, X, T, P,
-        x + a1 * ax + a2 * bx + a3 * cx + a4 * dx + a5 * ex,
-        theta + a1 * at + a2 * bt + a3 * ct + a4 * dt + a5 * et,
-        phi + a1 * ap + a2 * bp + a3 * cp + a4 * dp + a5 * ep, cell,
-    )  # fmt: skip
-    a1, a3, a4 = 35 / 384 * h, 500 / 1113 * h2, 125 / 192 * h2
-    a5, a6 = -2187 / 6784 * h2, 11 / 84 * h2
-    qx = x + a1 * ax + a3 * cx + a4 * dx + a5 * ex + a6 * gx
-    qt = theta + a1 * at + a3 * ct + a4 * dt + a5 * et + a6 * gt
-    qp = phi + a1 * ap + a3 * cp + a4 * dp + a5 * ep + a6 * gp
-    fx, ft, fp, size = _direction(F, X, T, P, qx, qt, qp, cell)
-    e1, e3, e4 = 71 / 57600 * h, -71 / 16695 * h2, 71 / 1920 * h2
-    e5, e6, e7 = -17253 / 339200 * h2, 22 / 525 * h2, -1 / 40 * h2
+    cx, ct, cp, _, i, j, k = _direction(
+        field, first, axes, x + later * bx, theta + later * bt, phi + later * bp, i, j, k
+    )
+    s1, s2, s3 = 2 / 9 * h, 1 / 3 * h * sign, 4 / 9 * h * sign
+    qx = x + s1 * ax + s2 * bx + s3 * cx
+    qt = theta + s1 * at + s2 * bt + s3 * ct
+    qp = phi + s1 * ap + s2 * bp + s3 * cp
+    fx, ft, fp, size, i, j, k = _direction(field, first, axes, qx, qt, qp, i, j, k)
+    e1, e2, e3, e4 = -5 / 72 * h, 1 / 12 * h * sign, 1 / 9 * h * sign, -1 / 8 * h * sign
     error = max(
-        abs(e1 * ax + e3 * cx + e4 * dx + e5 * ex + e6 * gx + e7 * fx),
-        abs(e1 * at + e3 * ct + e4 * dt + e5 * et + e6 * gt + e7 * ft),
+        abs(e1 * ax + e2 * bx + e3 * cx + e4 * fx), abs(e1 * at + e2 * bt + e3 * ct + e4 * ft)
     )
-    turn = abs(e1 * ap + e3 * cp + e4 * dp + e5 * ep + e6 * gp + e7 * fp) * np.sin(theta)
-    return qx, qt, qp, sign * fx, sign * ft, sign * fp, size, max(error, turn)
+    turn = abs(e1 * ap + e2 * bp + e3 * cp + e4 * fp) * axes[6][j]
+    return qx, qt, qp, sign * fx, sign * ft, sign * fp, size, max(error, turn), i, j, k
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FUSED)
+def _within_block(
+    field, first, axes, box, limits, place, seed, travel, cell, sign, points, count, steps, rules
+):
+    """Follow one line until it ends, leaves the block, or the buffer is full.
+
+    Returns count, steps left and the reason; with "going on" and room left it has left the block.
+    """
+    weakest, tolerance, most_cells, longest, period = rules
+    x, theta, phi = place[0], place[1], place[2]
+    length, h_next, farthest, turns = travel[0], travel[1], travel[2], travel[3]
+    per_x, per_theta, per_phi = axes[3], axes[4], axes[5]
+    fx, ft, fp, size, i, j, k = _direction(
+        field, first, axes, x, theta, phi, cell[0], cell[1], cell[2]
+    )
+    fx, ft, fp = sign * fx, sign * ft, sign * fp
+    r, reason, inside = np.exp(x), GOING_ON, True
+    while inside and reason == GOING_ON and count < points.shape[0]:
+        if not size > weakest or not size < np.inf:
+            reason = WEAK if size <= weakest else NO_DATA
+            break
+        if steps <= 0:
+            reason = STEPS
+            break
+        ax, at, ap = fx, ft, fp
+        cell_step = 1 / max(abs(ax) * per_x[i], abs(at) * per_theta[j], abs(ap) * per_phi[k])
+        h = min(h_next, most_cells * cell_step)
+        while True:
+            qx, qt, qp, fx, ft, fp, size, error, i, j, k = _step(
+                field, first, axes, x, theta, phi, ax, at, ap, h, sign, i, j, k
+            )
+            error /= tolerance
+            steps -= 1
+            if error <= 1.0:
+                break
+            if h <= _SMALLEST_SHARE * most_cells * cell_step:
+                if not np.isfinite(error):
+                    reason = NO_DATA
+                break  # As small as it gets: a kink of the interpolation.
+            if steps <= 0:
+                reason = STEPS
+                break
+            h *= max(0.2, _SAFETY / np.sqrt(error)) if np.isfinite(error) else 0.25
+        if reason != GOING_ON:
+            break
+        h_next = h * min(_LARGEST_GROWTH, _SAFETY / np.sqrt(np.sqrt(error)))
+        r_end = np.exp(qx)
+        gained = _arc(r, ax, r_end, fx, h)
+        inside = box[0] <= qx < box[1] and box[2] <= qt < box[3] and box[4] <= qp < box[5]
+        # Further from the seed than a step and a look around, nothing can close.
+        about = h + _CURVE_CELLS * cell_step
+        at_seed = abs(qx - seed[0]) <= about and abs(qt - seed[1]) <= about
+        if not inside or at_seed or farthest <= _LEFT_CELLS or length + gained > longest:
+            width = np.sin(theta) / per_phi[k]
+            width = min(min(1 / per_x[i], 1 / per_theta[j]), width)
+            reason, (qx, qt, qp), gained = _ended(
+                (x, theta, phi), (ax, at, ap), (qx, qt, qp), (fx, ft, fp), h, gained, limits,
+                longest - length, farthest > _LEFT_CELLS, seed, width, period,
+            )  # fmt: skip
+            r_end = np.exp(qx)
+            q = (qx, qt, qp)
+            farthest = max(farthest, _near_seed(q, q, seed, period)[0] / width)
+        length += gained
+        # A wall met once more by rounding only moves the last point onto it.
+        if abs(qx - x) + abs(qt - theta) + abs(qp - phi) > _SAME_POINT:
+            count += 1
+        x, theta, phi, r = qx, qt, qp, r_end
+        if count > 0:
+            points[count - 1, 0], points[count - 1, 1] = r, theta
+            points[count - 1, 2] = phi + turns * period
+    place[0], place[1], place[2] = x, theta, phi
+    travel[0], travel[1], travel[2] = length, h_next, farthest
+    cell[0], cell[1], cell[2] = i, j, k
+    return count, steps, reason
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def _follow(
-    place, seed, travel, cell, sign, field, x_c, theta_c, phi_c, x_edges, theta_edges, phi_edges,
-    lattice, table, limits, points, weakest, tolerance, most_cells, longest, steps,
+    place, seed, travel, cell, sign, field, centres, boxes, lattice, table, limits, points, rules,
+    steps,
 ):  # fmt: skip
     """Follow one line until it ends or the buffer is full; return points, steps and the reason.
 
     `travel` holds length, step, farthest distance from the seed in cells, and whole turns of the
     wedge; `limits` the walls. phi stays within the wedge and is never rounded by a change of block.
     """
+    X, T, P, per_x, per_theta, per_phi, sines, cosines = centres
     lines_x, lines_theta, lines_phi = lattice
-    first, period = lines_phi[0], lines_phi[-1] - lines_phi[0]
-    count, p, q = 0, np.empty(3), np.empty(3)
-    way_in, way_out = np.empty(3), np.empty(3)
-    block = cell[3]
-    x, theta, phi = place[0], place[1], place[2]
-    fx, ft, fp, size = _direction(
-        field[block], x_c[block], theta_c[block], phi_c[block], x, theta, phi, cell
-    )
-    while count < points.shape[0]:
-        if not np.isfinite(size):
-            return count, steps, NO_DATA
-        if size <= weakest:
-            return count, steps, WEAK
-        if steps <= 0:
-            return count, steps, STEPS
-        width = _cell_size(x_c[block], theta_c[block], phi_c[block], theta, cell)
-        h = min(travel[1], most_cells * width)
-        F, X, T, P = field[block], x_c[block], theta_c[block], phi_c[block]
-        ax, at, ap = sign * fx, sign * ft, sign * fp
-        while True:
-            q[0], q[1], q[2], fx, ft, fp, size, error = _step(
-                F, X, T, P, x, theta, phi, ax, at, ap, h, sign, cell
-            )
-            error /= tolerance
-            steps -= 1
-            if error <= 1.0:
-                break
-            if not np.isfinite(error):
-                if h <= _SMALLEST_SHARE * width:
-                    return count, steps, NO_DATA
-                h *= 0.25
-            else:
-                if h <= _SMALLEST_SHARE * width:
-                    break  # As small as it gets: a kink of the interpolation.
-                h *= max(0.2, _SAFETY * error**-0.2)
-            if steps <= 0:
-                return count, steps, STEPS
-        # The next step's size; a very small error would divide by zero.
-        travel[1] = h * min(5.0, _SAFETY * max(error, 1e-4) ** -0.2)
-
-        share, reason = 1.0, GOING_ON
-        for axis in range(2):
-            start, slope0 = (x, ax) if axis == 0 else (theta, at)
-            slope1 = fx if axis == 0 else ft
-            for end in range(2):
-                wall = limits[axis, end]
-                if (q[axis] < wall) if end == 0 else (q[axis] > wall):
-                    here = _crossing(start, slope0, q[axis], slope1, h, wall)
-                    if here < share or reason == GOING_ON:
-                        share = here
-                        reason = INNER + end if axis == 0 else _axis_or(UPPER + end, wall)
-        gained = _arc(x, ax, q[0], fx, h, share)
-        if travel[0] + gained > longest:
-            reason = LENGTH
-            for _ in range(_CUT_ROUNDS):
-                share *= (longest - travel[0]) / gained
-                gained = _arc(x, ax, q[0], fx, h, share)
-            gained = longest - travel[0]
-        if reason != GOING_ON:
-            ends = (
-                _hermite(x, ax, q[0], fx, h, share),
-                _hermite(theta, at, q[1], ft, h, share),
-                _hermite(phi, ap, q[2], fp, h, share),
-            )
-            q[0], q[1], q[2] = ends
-            if reason != LENGTH:
-                axis = 0 if reason <= OUTER else 1
-                low = abs(q[axis] - limits[axis, 0]) < abs(q[axis] - limits[axis, 1])
-                q[axis] = limits[axis, 0] if low else limits[axis, 1]
-        travel[0] += gained
-
-        p[0], p[1], p[2] = x, theta, phi
-        distance, part, turns = _near_seed(p, q, seed, period)
-        may_close = travel[2] > _LEFT_CELLS and reason == GOING_ON
-        if may_close and distance < _CURVE_CELLS * width:
-            way_in[0], way_in[1], way_in[2] = ax, at, ap
-            way_out[0], way_out[1], way_out[2] = fx, ft, fp
-            distance, part, turns = _curve_near_seed(p, way_in, q, way_out, h, seed, period)
-        if may_close and distance < _CLOSED_CELLS * width:
-            reason = CLOSED
-            q[0], q[1], q[2] = seed[0], seed[1], seed[2] + turns
-            travel[0] -= (1.0 - part) * gained
-        travel[2] = max(travel[2], _near_seed(q, q, seed, period)[0] / width)
-
-        # A wall met once more by rounding only moves the last point onto it.
-        if abs(q[0] - x) + abs(q[1] - theta) + abs(q[2] - phi) > _SAME_POINT:
-            count += 1
-        x, theta, phi = q[0], q[1], q[2]
-        if count > 0:
-            points[count - 1, 0], points[count - 1, 1] = x, theta
-            points[count - 1, 2] = phi + travel[3] * period
-        if phi < first:
-            phi += period
+    period = rules[4]
+    size = 3 * X.shape[1] * T.shape[1] * P.shape[1]
+    count, reason = 0, GOING_ON
+    while count < points.shape[0] and reason == GOING_ON:
+        b = cell[3]
+        # One view of each array for a block: views are counted, which takes as long as a step.
+        axes = (
+            X[b], T[b], P[b], per_x[b], per_theta[b], per_phi[b], sines[b], cosines[b]
+        )  # fmt: skip
+        count, steps, reason = _within_block(
+            field, b * size, axes, boxes[b], limits, place, seed, travel, cell, sign, points,
+            count, steps, rules,
+        )  # fmt: skip
+        if place[2] < lines_phi[0]:
+            place[2] += period
             travel[3] -= 1.0
-        elif phi >= first + period:
-            phi -= period
+        elif place[2] >= lines_phi[0] + period:
+            place[2] -= period
             travel[3] += 1.0
-        place[0], place[1], place[2] = x, theta, phi
-        if reason != GOING_ON:
-            return count, steps, reason
-        inside = (
-            x_edges[block, 0] <= x < x_edges[block, 1]
-            and theta_edges[block, 0] <= theta < theta_edges[block, 1]
-            and phi_edges[block, 0] <= phi < phi_edges[block, 1]
-            and phi == q[2]
+        cell[3] = _lattice_block(
+            place[0], place[1], place[2], lines_x, lines_theta, lines_phi, table
         )
-        if not inside:
-            block = _lattice_block(x, theta, phi, lines_x, lines_theta, lines_phi, table)
-            cell[3] = block
-            fx, ft, fp, size = _direction(
-                field[block], x_c[block], theta_c[block], phi_c[block], x, theta, phi, cell
-            )
-        else:
-            # First same as last: the slope at the end is the next step's first one.
-            fx, ft, fp = sign * fx, sign * ft, sign * fp
-    return count, steps, GOING_ON
+    return count, steps, reason
 
 
 @njit(cache=True, nogil=True, parallel=True, error_model="numpy")
 def follow_lines(
-    active, places, seeds, travels, cells, signs, field, x_c, theta_c, phi_c, x_edges,
-    theta_edges, phi_edges, lattice, table, limits, points, counts, reasons, steps_left, weakest,
-    tolerance, most_cells, longest,
+    active, places, seeds, travels, cells, sign, field, centres, boxes, lattice, table, limits,
+    points, counts, reasons, steps_left, rules,
 ):  # fmt: skip
     """Continue all active lines by at most a buffer of points each."""
     for n in prange(active.shape[0]):
         line = active[n]
         counts[n], steps_left[line], reasons[line] = _follow(
-            places[line], seeds[line], travels[line], cells[line], signs[line], field, x_c, theta_c,
-            phi_c, x_edges, theta_edges, phi_edges, lattice, table, limits, points[n], weakest,
-            tolerance, most_cells, longest, steps_left[line],
+            places[line], seeds[line], travels[line], cells[line], sign, field, centres, boxes,
+            lattice, table, limits, points[n], rules, steps_left[line],
         )  # fmt: skip
 
 
@@ -352,3 +378,32 @@ def start_blocks(places, lines_x, lines_theta, lines_phi, table, cells, turns):
             turns[line] = np.floor((phi - local) / period + 0.5)
             places[line, 2] = local
             cells[line, 3] = _lattice_block(x, theta, local, lines_x, lines_theta, lines_phi, table)
+
+
+@njit(cache=True, nogil=True, parallel=True)
+def gather_rows(points, counts, starts, gathered):
+    """Copy the filled part of each line's buffer to its place."""
+    for n in prange(counts.shape[0]):
+        for m in range(counts[n]):
+            for axis in range(3):
+                gathered[starts[n] + m, axis] = points[n, m, axis]
+
+
+@njit(cache=True, nogil=True, parallel=True)
+def lay_out(points, counts, starts, firsts, step, line_points):
+    """Lay points found from the seed outwards into their lines, forwards (+1) or backwards (-1)."""
+    for n in prange(counts.shape[0]):
+        for m in range(counts[n]):
+            for axis in range(3):
+                line_points[firsts[n] + step * m, axis] = points[starts[n] + m, axis]
+
+
+@njit(cache=True, nogil=True)
+def largest_number(values):
+    """Largest size of a finite value, 0 without one."""
+    largest = 0.0
+    for value in values:
+        size = abs(value)
+        if np.isfinite(size) and size > largest:
+            largest = size
+    return largest

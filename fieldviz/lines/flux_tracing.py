@@ -5,10 +5,10 @@ from __future__ import annotations
 import numpy as np
 
 from fieldviz.errors import FieldvizError, MissingFieldError
-from fieldviz.lines.half import BUFFER_POINTS, Half
+from fieldviz.lines.half import Half, followed_to_the_end
 from fieldviz.wedge.fields import MAGNETIC
 from fieldviz.wedge.snapshot import Snapshot
-from fieldviz.wedge.typing import Array
+from fieldviz.wedge.typing import Array, IntArray
 
 __all__ = ["FluxWalk"]
 
@@ -67,17 +67,12 @@ class FluxWalk:
         reason = np.where(cells[:, 3] < 0, _kernels.OUTSIDE, _kernels.GOING_ON)
         reason[(reason == _kernels.GOING_ON) & (seeds[:, 0] == 0.0)] = _kernels.AXIS
         steps = np.full(n, self.most_steps, dtype=np.int64)
-        pieces = []
-        active = np.flatnonzero(reason == _kernels.GOING_ON)
-        while len(active):
-            room = int(np.clip(BUFFER_POINTS // len(active), 4 * _SPARE, 4096))
-            points = np.empty((len(active), room, 3))
-            counts = np.zeros(len(active), dtype=np.int64)
+
+        def advance(active: IntArray, points: Array, counts: IntArray) -> None:
             _flux_kernels.follow_lines(
                 active, cells, shares, travels, float(sign), self.faces, self.edges, self.lattice,
                 self.table, self.weakest, self.most_cells, self.longest, self.poloidal, seeds,
                 self.period, points, counts, reason, steps,
             )  # fmt: skip
-            pieces.append((active, counts, points[np.arange(room) < counts[:, None]]))
-            active = active[reason[active] == _kernels.GOING_ON]
-        return Half(pieces, reason, travels[:, 0])
+
+        return Half(followed_to_the_end(advance, reason, 4 * _SPARE), reason, travels[:, 0])

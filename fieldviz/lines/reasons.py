@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-__all__ = ["CLOSED", "NOT_TRACED", "WORDS"]
+__all__ = ["CLOSED", "GOING_ON", "NOT_TRACED", "WORDS"]
 
-CLOSED, NOT_TRACED = 9, 12
+GOING_ON, CLOSED, NOT_TRACED = 0, 9, 12
 # In the order of the constants in `_kernels`.
 WORDS = (
     "going on",

@@ -8,19 +8,20 @@ import numpy as np
 
 from fieldviz.errors import FieldvizError, GridError
 from fieldviz.lines import reasons
-from fieldviz.lines.half import BUFFER_POINTS, Half
+from fieldviz.lines.half import Half, followed_to_the_end
 from fieldviz.lines.line_set import LineSet
 from fieldviz.wedge.fields import MAGNETIC, VELOCITY
 from fieldviz.wedge.grid import WedgeGrid
-from fieldviz.wedge.halo import halo, halo_grid
+from fieldviz.wedge.halo import halo_array, halo_grid
 from fieldviz.wedge.snapshot import Snapshot
-from fieldviz.wedge.typing import Array
+from fieldviz.wedge.typing import Array, IntArray
 
 __all__ = ["trace_lines"]
 
 _VECTORS = {"magnetic": MAGNETIC, "velocity": VELOCITY}
 _DIRECTIONS = {"both": (1, -1), "forward": (1,), "backward": (-1,)}
 _WEAKEST = 1e-8
+_LINES_AT_ONCE = 2048
 
 
 def trace_lines(
@@ -98,8 +99,7 @@ def trace_lines(
         follow = LinearWalk(
             snapshot, name, tolerance, most_cells, limit, most_steps, poloidal
         ).follow
-    halves = _followed(follow, places, _DIRECTIONS[direction])
-    lines = _joined(snapshot.grid, name, places, halves, _DIRECTIONS[direction])
+    lines = _traced(snapshot.grid, name, places, follow, _DIRECTIONS[direction])
     return lines.with_fields(snapshot, *sample) if sample else lines
 
 
@@ -129,27 +129,30 @@ class LinearWalk:
         most_steps: int,
         poloidal: bool,
     ) -> None:
+        from fieldviz.lines._kernels import largest_number
+
         self.grid = snapshot.grid
         self.field = _haloed_vectors(snapshot, name, poloidal)
-        around = halo_grid(self.grid)
         if self.grid.r_range[0] <= 0:
             raise GridError(
                 "Cannot trace lines: expected an inner radius above 0, got 0; cut the origin away."
             )
-        self.x = np.log(around.r)
-        self.theta, self.phi = around.theta, around.phi
+        around = halo_grid(self.grid)
+        x, theta, phi = np.log(around.r), around.theta, around.phi
+        steps = (1.0 / np.diff(axis) for axis in (x, theta, phi))
+        self.centres = (x, theta, phi, *steps, np.sin(theta), np.cos(theta))
         ends = [0, -1]
-        self.edges = (
+        edges = (
             np.log(self.grid.r_edges[:, ends]),
-            np.ascontiguousarray(self.grid.theta_edges[:, ends]),
-            np.ascontiguousarray(self.grid.phi_edges[:, ends]),
+            *(lines[:, ends] for lines in (self.grid.theta_edges, self.grid.phi_edges)),
         )
+        self.boxes = np.concatenate(edges, axis=1)
         table = self.grid.table
         self.lattice = (np.log(table.r), table.theta, table.phi)
         self.limits = np.array([self.lattice[0][[0, -1]], table.theta[[0, -1]]])
-        self.tolerance, self.most_cells = tolerance, most_cells
-        self.longest, self.most_steps = longest, most_steps
-        self.weakest = _WEAKEST * _largest(self.field)
+        weakest = _WEAKEST * largest_number(self.field.reshape(-1))
+        self.rules = (weakest, tolerance, most_cells, longest, self.grid.period)
+        self.most_steps = most_steps
 
     def follow(self, seeds: Array, sign: int) -> Half:
         """Follow all seeds along (+1) or against (-1) the field."""
@@ -173,24 +176,16 @@ class LinearWalk:
         on_axis = (reason == _kernels.GOING_ON) & (np.sin(places[:, 1]) < 1e-12)
         reason[on_axis] = _kernels.AXIS
         steps = np.full(n, self.most_steps, dtype=np.int64)
-        signs = np.full(n, float(sign))
-        pieces = []
-        active = np.flatnonzero(reason == _kernels.GOING_ON)
-        start = places.copy()
-        while len(active):
-            room = int(np.clip(BUFFER_POINTS // len(active), 64, 4096))
-            points = np.empty((len(active), room, 3))
-            counts = np.zeros(len(active), dtype=np.int64)
+        start, field = places.copy(), self.field.reshape(-1)
+
+        def advance(active: IntArray, points: Array, counts: IntArray) -> None:
             _kernels.follow_lines(
-                active, places, start, travel, cells, signs, self.field, self.x, self.theta,
-                self.phi, *self.edges, self.lattice, self.grid.table.block, self.limits, points,
-                counts, reason, steps, self.weakest, self.tolerance, self.most_cells, self.longest,
+                active, places, start, travel, cells, float(sign), field, self.centres, self.boxes,
+                self.lattice, self.grid.table.block, self.limits, points, counts, reason, steps,
+                self.rules,
             )  # fmt: skip
-            kept = points[np.arange(room) < counts[:, None]]
-            kept[:, 0] = np.exp(kept[:, 0])
-            pieces.append((active, counts, kept))
-            active = active[reason[active] == _kernels.GOING_ON]
-        return Half(pieces, reason, travel[:, 0])
+
+        return Half(followed_to_the_end(advance, reason, 64), reason, travel[:, 0])
 
 
 def _haloed_vectors(snapshot: Snapshot, name: str, poloidal: bool) -> Array:
@@ -198,11 +193,12 @@ def _haloed_vectors(snapshot: Snapshot, name: str, poloidal: bool) -> Array:
     parts = _VECTORS[name]
     shape = (snapshot.grid.n_blocks, *(n + 2 for n in snapshot.grid.block_shape), 3)
     dtype = np.result_type(*(snapshot.cell(part).dtype for part in parts))
-    vectors = np.zeros(shape, dtype=dtype)
+    vectors = np.empty(shape, dtype=dtype)
+    if poloidal:
+        vectors[..., 2] = 0
     for axis, part in enumerate(parts[: 2 if poloidal else 3]):
-        component = halo(snapshot, part)
+        component = halo_array(snapshot.grid, snapshot.cell(part), out=vectors[..., axis])
         _keep_sign_at_walls(component, snapshot.grid)
-        vectors[..., axis] = component
     return vectors
 
 
@@ -230,43 +226,33 @@ def _keep_sign_at_walls(haloed: Array, grid: WedgeGrid) -> None:
             beyond[false] = 0
 
 
-def _largest(vectors: Array) -> float:
-    """Largest component; an all-zero or all-NaN field gives 0."""
-    largest = 0.0
-    for block in vectors:
-        finite = np.abs(block[np.isfinite(block)])
-        if finite.size:
-            largest = max(largest, float(finite.max()))
-    return largest
-
-
-def _joined(
-    grid: WedgeGrid, name: str, seeds: Array, halves: Sequence[Half], signs: Sequence[int]
-) -> LineSet:
-    """Put backward and forward halves together around their seeds."""
+def _traced(
+    grid: WedgeGrid, name: str, seeds: Array, follow: Callable[[Array, int], Half],
+    signs: Sequence[int],
+) -> LineSet:  # fmt: skip
+    """Trace some seeds at a time and lay their lines down behind those before: held only once."""
     n = len(seeds)
     counts = np.zeros((2, n), dtype=np.int64)  # backward, forward
     end_code = np.full((n, 2), reasons.NOT_TRACED, dtype=np.int64)
-    length = np.zeros(n)
-    for half, sign in zip(halves, signs, strict=True):
-        side = 1 if sign > 0 else 0
-        for lines, many, _ in half.pieces:
-            counts[side, lines] += many
-        end_code[:, side] = half.reason
-        length += half.length
-    has_seed = (end_code != reasons.WORDS.index("seed outside")).all(axis=1)
-    offsets = np.concatenate([[0], np.cumsum(counts.sum(0) + has_seed)])
-    seed_at = offsets[:-1] + counts[0]
-    spherical = np.empty((offsets[-1], 3))
-    spherical[seed_at[has_seed]] = seeds[has_seed]
-    for half, sign in zip(halves, signs, strict=True):
-        reached = np.zeros(n, dtype=np.int64)
-        for lines, many, points in half.pieces:
-            first = seed_at[lines] + sign * (reached[lines] + 1)
-            number = np.arange(len(points)) - np.repeat(np.cumsum(many) - many, many)
-            spherical[np.repeat(first, many) + sign * number] = points
-            reached[lines] += many
-    seed_index = np.where(has_seed, counts[0], -1)
+    length, offsets = np.zeros(n), np.zeros(n + 1, dtype=np.int64)
+    seed_index = np.full(n, -1, dtype=np.int64)
+    spherical = np.empty((0, 3))
+    for start in range(0, n, _LINES_AT_ONCE):
+        part = slice(start, min(start + _LINES_AT_ONCE, n))
+        halves = _followed(follow, seeds[part], signs)
+        for half, sign in zip(halves, signs, strict=True):
+            side = 1 if sign > 0 else 0
+            counts[side, part], end_code[part, side] = half.counts, half.reason
+            length[part] += half.length
+        has_seed = (end_code[part] != reasons.WORDS.index("seed outside")).all(axis=1)
+        many = np.cumsum(counts[:, part].sum(0) + has_seed)
+        offsets[start + 1 : part.stop + 1] = offsets[start] + many
+        spherical.resize((offsets[part.stop], 3), refcheck=False)  # moves no byte where it can
+        seed_at = offsets[part] + counts[0, part]
+        spherical[seed_at[has_seed]] = seeds[part][has_seed]
+        seed_index[part][has_seed] = counts[0, part][has_seed]
+        for half, sign in zip(halves, signs, strict=True):
+            half.lay_out(seed_at, sign, spherical)
     return LineSet(
         spherical, offsets, seed_index, end_code, length, name, grid.period, grid.phi_range[0]
     )
@@ -293,15 +279,16 @@ def _check_options(
         if given not in known:
             raise FieldvizError(
                 f"Cannot trace lines: expected {what} to be one of {', '.join(known)}, "
-                f"got '{given}'."
+                f"got '{given}'; name one of these."
             )
     for what, number, low, high in (
-        ("tolerance", tolerance, 1e-14, 1e-2),
+        ("tolerance", tolerance, 1e-13, 1e-2),
         ("most_cells", most_cells, 1e-3, 0.5),
         ("most_steps", most_steps, 1, 10_000_000),
         ("longest", np.inf if longest is None else longest, 1e-300, np.inf),
     ):
         if not low <= number <= high:
             raise FieldvizError(
-                f"Cannot trace lines: expected {what} between {low:g} and {high:g}, got {number}."
+                f"Cannot trace lines: expected {what} between {low:g} and {high:g}, got {number}; "
+                "choose a value in that range, or leave it out for the default."
             )

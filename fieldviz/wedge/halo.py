@@ -74,7 +74,9 @@ def halo(snapshot: Snapshot, name: str) -> Array:
     return halo_array(snapshot.grid, snapshot.cell(name), positive=stays_positive(name))
 
 
-def halo_array(grid: WedgeGrid, cells: Array, *, positive: bool = False) -> Array:
+def halo_array(
+    grid: WedgeGrid, cells: Array, *, positive: bool = False, out: Array | None = None
+) -> Array:
     """Any cell array of a grid with its ghost layer; see `halo`.
 
     Parameters
@@ -85,6 +87,8 @@ def halo_array(grid: WedgeGrid, cells: Array, *, positive: bool = False) -> Arra
         and phi to first order in the cell size, and exactly at the same point.
     positive : bool
         Never continue below zero.
+    out : (n_blocks, n_phi + 2, n_theta + 2, n_r + 2) array, optional
+        Where to put it; it need not be contiguous.
 
     Returns
     -------
@@ -99,7 +103,9 @@ def halo_array(grid: WedgeGrid, cells: Array, *, positive: bool = False) -> Arra
         )
     around = halo_grid(grid)
     table = grid.table
-    haloed = np.empty((shape[0], *(n + 2 for n in shape[1:])), dtype=cells.dtype)
+    haloed = out
+    if haloed is None:
+        haloed = np.empty((shape[0], *(n + 2 for n in shape[1:])), dtype=cells.dtype)
     haloed[:, 1:-1, 1:-1, 1:-1] = cells
     # Coarse levels first: finer ones interpolate between coarse cells and coarse ghosts.
     for level in grid.levels:
