@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 
 from fieldviz.wedge.fields import MAGNETIC
+from fieldviz.wedge.geometry import area_phi, area_r, area_theta, cell_volumes
 from fieldviz.wedge.grid import WedgeGrid
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
@@ -90,14 +90,18 @@ def divergence_error(snapshot: Snapshot) -> DivergenceError:
 
 
 def _face_part(snapshot: Snapshot) -> dict[str, Any]:
+    from fieldviz.derived._survey_kernels import face_divergence
+
     worst, worst_block, skipped, precision = 0.0, 0, 0, 8
-    for block in range(snapshot.grid.n_blocks):
-        b_r, b_theta, b_phi = (snapshot.faces.block(name, block) for name in MAGNETIC)
-        precision = min(precision, *(values.dtype.itemsize for values in (b_r, b_theta, b_phi)))
-        with np.errstate(all="ignore"):  # Damaged values are counted, not complained of.
-            ratio, bad = _face_ratio(snapshot.grid, block, b_r, b_theta, b_phi)
-        skipped += bad
-        largest = float(ratio.max())
+    grid = snapshot.grid
+    for block in range(grid.n_blocks):
+        fields = [snapshot.faces.block(name, block) for name in MAGNETIC]
+        precision = min(precision, *(values.dtype.itemsize for values in fields))
+        found = np.empty((grid.block_shape[0], 2))
+        steps = np.diff(grid.phi_edges[block])
+        face_divergence(*fields, *_unit_areas(grid, block), steps, found)
+        skipped += int(found[:, 1].sum())
+        largest = float(found[:, 0].max())
         if largest > worst:
             worst, worst_block = largest, block
     return {
@@ -108,43 +112,42 @@ def _face_part(snapshot: Snapshot) -> dict[str, Any]:
     }
 
 
-def _face_ratio(
-    grid: WedgeGrid, block: int, b_r: Array, b_theta: Array, b_phi: Array
-) -> tuple[Array, int]:
-    """|sum of fluxes| / sum of |fluxes| of each cell, and the number of cells that have none."""
-    areas = (grid.area_phi(block), grid.area_theta(block), grid.area_r(block))
-    total = np.zeros(grid.block_shape)
-    size = np.zeros(grid.block_shape)
-    for axis, (values, area) in enumerate(zip((b_phi, b_theta, b_r), areas, strict=True)):
-        flux = values * area
-        low, high = _both_sides(flux, axis)
-        total += high - low
-        size += np.abs(high) + np.abs(low)
-    usable = np.isfinite(size)
-    bad = int(size.size - np.count_nonzero(usable))
-    ratio = np.where(usable & (size > 0), np.abs(total) / np.where(size > 0, size, 1.0), 0.0)
-    return ratio, bad
-
-
-def _both_sides(array: Array, axis: int) -> tuple[Array, Array]:
-    count = array.shape[axis] - 1
-    low = np.take(array, range(count), axis)
-    return low, np.take(array, range(1, count + 1), axis)
+def _unit_areas(grid: WedgeGrid, block: int) -> tuple[Array, Array, Array]:
+    """Areas of faces across r, theta and phi, the first two for a unit of azimuth."""
+    r_edges, theta_edges, _ = grid.edges(block)
+    unit = np.array([0.0, 1.0])
+    return (
+        area_r(r_edges, theta_edges, unit)[0],
+        area_theta(r_edges, theta_edges, unit)[0],
+        np.ascontiguousarray(area_phi(r_edges, theta_edges, unit)[0]),
+    )
 
 
 def _cell_part(snapshot: Snapshot) -> dict[str, Any]:
+    from fieldviz.derived._survey_kernels import cell_divergence
+
+    grid = snapshot.grid
+    n_phi, n_theta, n_r = grid.block_shape
+    if min(n_theta, n_r) < 3 or n_phi == 2:
+        return {"n_skipped": 0}
     squares, count, skipped, worst, worst_block = 0.0, 0, 0, 0.0, None
-    for block in range(snapshot.grid.n_blocks):
-        components = [snapshot.cell_block(name, block).astype(np.float64) for name in MAGNETIC]
-        with np.errstate(all="ignore"):
-            ratio, bad = _cell_ratio(snapshot.grid, block, components)
-        skipped += bad
-        if not ratio.size:
+    inner = np.array([1, n_phi - 2] if n_phi > 1 else [0, 0])
+    for block in range(grid.n_blocks):
+        fields = [snapshot.cell_block(name, block) for name in MAGNETIC]
+        found = np.empty((n_phi, 4))
+        cell_divergence(
+            *fields, *_unit_areas(grid, block), *_unit_sizes(grid, block),
+            np.diff(grid.phi_edges[block]), inner, found,
+        )  # fmt: skip
+        skipped += int(found[:, 3].sum())
+        here = int(found[:, 1].sum())
+        if not here:
             continue
-        squares += float(np.square(ratio).sum())
-        count += ratio.size
-        if worst_block is None or ratio.max() > worst:
-            worst, worst_block = float(ratio.max()), block
+        squares += float(found[:, 0].sum())
+        count += here
+        largest = float(found[:, 2].max())
+        if worst_block is None or largest > worst:
+            worst, worst_block = largest, block
     if not count:
         return {"n_skipped": skipped}
     return {
@@ -155,37 +158,10 @@ def _cell_part(snapshot: Snapshot) -> dict[str, Any]:
     }
 
 
-def _cell_ratio(grid: WedgeGrid, block: int, components: Sequence[Array]) -> tuple[Array, int]:
-    """|div B| dx_min / |B| of the interior cells of one block, flat, and how many are unusable."""
-    shape = grid.block_shape
-    one_azimuth = shape[0] == 1
-    inner = tuple(slice(1, -1) if n > 1 else slice(None) for n in shape)
-    if min(shape[1:]) < 3 or shape[0] == 2:
-        return np.empty(0), 0
-    b_r, b_theta, b_phi = components
-    pieces = [(1, b_theta, grid.area_theta(block)), (2, b_r, grid.area_r(block))]
-    if not one_azimuth:  # A single azimuth cell: derivatives along phi are zero.
-        pieces.append((0, b_phi, grid.area_phi(block)))
-    outward = np.zeros(tuple(max(n - 2, 1) for n in shape))
-    for axis, values, area in pieces:
-        low, high = _both_sides(values, axis)
-        inner_faces = [part if n != axis else slice(1, -1) for n, part in enumerate(inner)]
-        others = [part if n != axis else slice(None) for n, part in enumerate(inner)]
-        flux = (0.5 * (low + high))[tuple(others)] * np.asarray(area)[tuple(inner_faces)]
-        below, above = _both_sides(flux, axis)
-        outward += above - below
-    strength = np.sqrt(b_r**2 + b_theta**2 + b_phi**2)[inner]
-    ratio = np.abs(outward) / grid.volumes(block)[inner] * _smallest_side(grid, block)[inner]
-    usable = np.isfinite(ratio) & np.isfinite(strength)
-    there = usable & (strength > 0)
-    return ratio[there] / strength[there], int(usable.size - np.count_nonzero(usable))
-
-
-def _smallest_side(grid: WedgeGrid, block: int) -> Array:
-    r_edges, theta_edges, phi_edges = grid.edges(block)
+def _unit_sizes(grid: WedgeGrid, block: int) -> tuple[Array, Array, Array]:
+    """Volume for a unit of azimuth, smallest side across phi, and length for a unit of azimuth."""
+    r_edges, theta_edges, _ = grid.edges(block)
     r, theta, _ = grid.cell_centres(block)
     side = np.minimum(np.diff(r_edges), r * np.diff(theta_edges)[:, None])
-    if len(phi_edges) == 2:
-        return np.broadcast_to(side, (1, *side.shape))
-    along = r * np.sin(theta)[:, None]
-    return np.minimum(side, along * np.diff(phi_edges)[:, None, None])
+    volume = cell_volumes(r_edges, theta_edges, np.array([0.0, 1.0]))[0]
+    return volume, side, r * np.sin(theta)[:, None]

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from fieldviz.derived.shared import once
 from fieldviz.errors import FieldvizError
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
@@ -57,6 +58,10 @@ def disc_thickness(snapshot: Snapshot) -> Thickness:
     -----
     Common practice, no source. The two ways agree for a vertically isothermal disc.
     """
+    return once(snapshot, "thickness", lambda: _measured(snapshot))
+
+
+def _measured(snapshot: Snapshot) -> Thickness:
     snapshot.require("work out the disc's thickness", "density")
     if snapshot.has("pressure"):
         h, weight = _from_pressure(snapshot)

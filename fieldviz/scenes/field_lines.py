@@ -11,7 +11,7 @@ from contourpy import contour_generator
 from scipy.interpolate import CubicSpline
 from scipy.ndimage import gaussian_filter, gaussian_filter1d
 
-from fieldviz.derived.flux_function import flux_function
+from fieldviz.derived.flux_function import flux_function_at
 from fieldviz.scenes.finite_cells import finite_field
 from fieldviz.scenes.surfaces import empty_surface
 from fieldviz.wedge.coordinates import points_to_cartesian
@@ -58,7 +58,7 @@ def poloidal_lines(snapshot: Snapshot, r_end: float | None, count: int) -> list[
         x = x[x <= np.log(r_end) + 1e-12]
     theta = _lines_of_edges(grid.theta_edges)
     r = np.clip(np.exp(x), *grid.r_range)
-    psi = flux_function(_without_gaps(snapshot), r, theta)
+    psi = flux_function_at(_without_gaps(snapshot), r, theta)
     x, y, fine = _refined(x, theta, psi, _slopes(x, theta, psi))
     generator = contour_generator(x, y, fine)
     lines = []

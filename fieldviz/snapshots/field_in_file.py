@@ -87,6 +87,30 @@ class FieldInFile:
             check_fits_memory(f"'{piece.dataset}'", n_values, self.dtype.itemsize)
         return self._as_model(self._selected(safe_dataset(file, piece.dataset), piece.selection))
 
+    def read_part(self, file: h5py.File, block: int, where: tuple[slice, slice, slice]) -> Array:
+        """A part of one block; `where` are slices along phi, theta and r with step 1."""
+        piece = self.pieces[block]
+        ranges = {
+            name: part.indices(n)[:2]
+            for name, part, n in zip(("phi", "theta", "r"), where, self.shape, strict=True)
+        }
+        axes = list(self.order)
+        selection: list[int | slice] = []
+        for taken in piece.selection:
+            if not isinstance(taken, slice):
+                selection.append(taken)
+                continue
+            name = axes.pop(0)
+            n = self.shape[("phi", "theta", "r").index(name)]
+            low, high = ranges[name]
+            if name in self.reversed_axes:
+                low, high = n - high, n - low
+            first = taken.start or 0
+            selection.append(slice(first + low, first + high))
+        shape = tuple(high - low for low, high in ranges.values())
+        dataset = safe_dataset(file, piece.dataset)
+        return self._as_model(self._selected(dataset, tuple(selection)), shape)
+
     def _selected(self, dataset: h5py.Dataset, selection: Selection) -> Array:
         if self.stored.kind == "b":  # HDF5 converts no truth values.
             return np.asarray(dataset[selection], dtype=self.dtype)
@@ -102,9 +126,9 @@ class FieldInFile:
             values[block] = self.read_block(file, block)
         return values
 
-    def _as_model(self, stored: Array) -> Array:
+    def _as_model(self, stored: Array, shape: tuple[int, ...] | None = None) -> Array:
         axes = [self.order.index(name) for name in ("phi", "theta", "r") if name in self.order]
-        values = stored.transpose(axes).reshape(self.shape)
+        values = stored.transpose(axes).reshape(shape or self.shape)
         turned: Any = tuple(
             slice(None, None, -1 if name in self.reversed_axes else 1)
             for name in ("phi", "theta", "r")
@@ -145,6 +169,14 @@ class FileFields(Fields):
         plan = self._plan(name)
         with self._reading(name) as file:
             return plan.read_block(file, block)
+
+    def part(self, name: str, block: int, where: tuple[slice, slice, slice]) -> Array:
+        """A part of one block; read from the file unless the whole field is here already."""
+        if name in self._kept:
+            return self._kept[name][block][where]
+        plan = self._plan(name)
+        with self._reading(name) as file:
+            return plan.read_part(file, block, where)
 
     @contextmanager
     def _reading(self, name: str) -> Iterator[h5py.File]:

@@ -46,6 +46,10 @@ class Fields(Mapping[str, Array]):
         array: Array = self[name][block]
         return array
 
+    def part(self, name: str, block: int, where: tuple[slice, slice, slice]) -> Array:
+        """A part of one block, slices along phi, theta and r; files read no more than that."""
+        return self.block(name, block)[where]
+
 
 class ArrayFields(Fields):
     """Fields held in memory.

@@ -247,6 +247,8 @@ class Snapshot:
         """Cell values of one block, (n_phi, n_theta, n_r); a file is read no further than that."""
         if name in self.cells:
             return self.cells.block(name, block)
+        if name in self._made:
+            return self._made[name][block]
         if name in self.faces:
             return _face_mean(self.faces.block(name, block), _FACE_AXIS[name])
         raise MissingFieldError(missing_sentence(name, dict.fromkeys(self.cell_names)))

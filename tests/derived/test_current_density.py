@@ -106,7 +106,9 @@ def test_face_fields_agree_with_the_mean_of_dual_loops_to_second_order():
             "magnetic_theta": on(b_theta, phi_c, theta, r_c),
             "magnetic_phi": on(b_phi, phi, theta_c, r_c),
         }
-        found = fv.current_density(fv.Snapshot.from_arrays(r, theta, phi, faces=faces)).phi[0]
+        found = fv.current_density(
+            fv.Snapshot.from_arrays(r, theta, phi, faces=faces), form="cells"
+        ).phi[0]
         edges = dual_loops_phi(faces, r, theta)
         mean = 0.25 * (
             edges[:, 1:, 1:] + edges[:, 1:, :-1] + edges[:, :-1, 1:] + edges[:, :-1, :-1]

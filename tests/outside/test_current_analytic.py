@@ -9,9 +9,10 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from scipy.special import sph_harm_y
+from scipy.special import j0, j1, sph_harm_y
 
 import fieldviz as fv
+from fieldviz.derived.edge_current import edge_current
 
 NAMES = ("magnetic_r", "magnetic_theta", "magnetic_phi")
 INNER = (0, slice(1, -1), slice(1, -1), slice(1, -1))
@@ -178,3 +179,76 @@ def test_the_current_of_a_parker_spiral():
         assert abs(found.phi[at]) < 1e-14
     np.testing.assert_allclose(np.divide(errors[0], errors[1]), 9, rtol=0.03)
     assert np.abs(errors[1]).max() < 1e-4
+
+
+def axial(field):
+    """A field (B_phi, B_z) of the cylinder radius as one of spherical components."""
+
+    def components(r, theta, phi):
+        around, up = field(r * np.sin(theta))
+        return up * np.cos(theta), -up * np.sin(theta), around
+
+    return components
+
+
+# Fields with curl B = alpha B, each with its alpha as a function of the cylinder radius.
+FORCE_FREE = {
+    "abc": (spherical(abc), lambda s: 1.0),
+    # Lundquist 1950, Ark. Fys. 2, 361, from memory.
+    "lundquist": (axial(lambda s: (j1(s), j0(s))), lambda s: 1.0),
+    # Gold & Hoyle 1960, MNRAS 120, 89, from memory; twist 0.7 per length.
+    "gold-hoyle": (
+        axial(lambda s: (0.7 * s / (1 + 0.49 * s**2), 1 / (1 + 0.49 * s**2))),
+        lambda s: 1.4 / (1 + 0.49 * s**2),
+    ),
+    "uniform": (axial(lambda s: (0 * s, 1 + 0 * s)), lambda s: 0.0),
+}
+
+# Recorded rms errors of J_r, J_theta, J_phi on inner edges, from B sampled at face centres.
+EDGE_ERRORS = {
+    ("abc", 16): (0.0004901789151307182, 0.0006773918325640239, 0.0005188200876600626),
+    ("abc", 32): (0.00012341354531346605, 0.0001691582296075116, 0.00012993588143915584),
+    ("abc", 64): (3.0955844732581645e-05, 4.226446860734928e-05, 3.251070057601346e-05),
+    ("lundquist", 16): (3.412343679355195e-05, 0.000485536082950835, 0.00042725169431514533),
+    ("lundquist", 32): (8.746008006549387e-06, 0.0001215406015258673, 0.0001053350768944439),
+    ("lundquist", 64): (2.2124957000278408e-06, 3.0406335957718842e-05, 2.6147193668921018e-05),
+    ("gold-hoyle", 16): (2.875182195611461e-05, 0.00033853827268669743, 5.374525538177195e-05),
+    ("gold-hoyle", 32): (7.386652052234336e-06, 8.465399810328548e-05, 1.3742851692663364e-05),
+    ("gold-hoyle", 64): (1.8706587757378388e-06, 2.116417914294209e-05, 3.4705867041603746e-06),
+    ("uniform", 16): (0.0, 0.0, 9.355023781756996e-05),
+    ("uniform", 32): (0.0, 0.0, 2.340501504708571e-05),
+    ("uniform", 64): (0.0, 0.0, 5.852862955505708e-06),
+}
+
+
+def edge_errors(name, n):
+    field, alpha = FORCE_FREE[name]
+    edges = mesh(n)
+
+    def at(own, *, faces):
+        lines = [
+            e if (axis == own) == faces else 0.5 * (e[1:] + e[:-1]) for axis, e in enumerate(edges)
+        ]
+        phi, theta, r = np.meshgrid(*lines[::-1], indexing="ij")
+        return np.broadcast_to(field(r, theta, phi)[own], r.shape), alpha(r * np.sin(theta))
+
+    faces = {label: at(own, faces=True)[0] for own, label in enumerate(NAMES)}
+    found = edge_current(fv.Snapshot.from_arrays(*edges, faces=faces))
+    errors, inner = [], slice(1, -1)
+    for own, values in enumerate((found.r, found.theta, found.phi)):
+        strength, factor = at(own, faces=False)
+        # Off the outer boundary, as recorded.
+        kept = tuple(slice(None) if axis == own else inner for axis in (2, 1, 0))
+        errors.append(np.sqrt(np.mean((values[0] - factor * strength)[kept] ** 2)))
+    return errors
+
+
+@pytest.mark.parametrize("name", FORCE_FREE)
+def test_currents_on_edges_have_the_recorded_errors_and_second_order(name):
+    found = np.array([edge_errors(name, n) for n in (16, 32, 64)])
+    recorded = [EDGE_ERRORS[name, n] for n in (16, 32, 64)]
+    np.testing.assert_allclose(found, recorded, rtol=1e-6, atol=1e-13)
+    large = found[:, found[0] > 1e-12]
+    orders = np.log2(large[:-1] / large[1:])
+    assert orders.min() > 1.9
+    assert orders.max() < 2.1

@@ -13,7 +13,7 @@ import pytest
 from scipy.integrate import solve_ivp
 
 import fieldviz as fv
-from fieldviz.derived.flux_function import flux_function
+from fieldviz.derived.flux_function import flux_function_at
 from fieldviz.wedge import geometry
 from fieldviz.wedge.geometry import centres
 
@@ -344,7 +344,9 @@ def test_footpoints_of_the_demo_disc(interpolation, wind):
 
 
 def psi_range(snapshot):
-    return np.ptp(flux_function(snapshot, snapshot.grid.r_edges[0], snapshot.grid.theta_edges[0]))
+    return np.ptp(
+        flux_function_at(snapshot, snapshot.grid.r_edges[0], snapshot.grid.theta_edges[0])
+    )
 
 
 def midplane_seeds(count):
@@ -361,7 +363,7 @@ def test_flux_function_stays_along_flux_lines(blocks, stretch):
     lines = fv.trace_lines(disc, "magnetic", midplane_seeds(12), interpolation="flux")
     for number in range(len(lines)):
         r, theta, _ = lines.line(number).T
-        psi = np.diagonal(flux_function(disc, r, theta))
+        psi = np.diagonal(flux_function_at(disc, r, theta))
         assert len(psi) > 40
         assert np.ptp(psi) < 1e-10 * psi_range(disc)
 
@@ -373,8 +375,8 @@ def test_flux_function_across_a_level_jump():
         disc = fv.demo_disc(shape=(2, n, n), levels=2, blocks=(1, 4, 4))
         lines = fv.trace_lines(disc, "magnetic", midplane_seeds(100), interpolation="flux")
         r, theta, _ = lines.footpoints.position.reshape(-1, 3).T
-        ends = np.diagonal(flux_function(disc, r, theta)).reshape(-1, 2)
-        seed = flux_function(disc, midplane_seeds(100)[:, 0], np.array([np.pi / 2]))[0]
+        ends = np.diagonal(flux_function_at(disc, r, theta)).reshape(-1, 2)
+        seed = flux_function_at(disc, midplane_seeds(100)[:, 0], np.array([np.pi / 2]))[0]
         drift = np.abs(ends - seed[:, None]) / psi_range(fv.demo_disc(shape=(2, n, n)))
         found.append(np.sqrt(np.mean(drift**2)))
     assert found[-1] < 1e-3
