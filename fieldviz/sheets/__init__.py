@@ -1,0 +1,1 @@
+"""Sheets: where vertical flux gathers, how it moves in time, and where current is concentrated."""
