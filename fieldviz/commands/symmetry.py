@@ -1,20 +1,26 @@
-"""`fieldviz symmetry`: the verdict on the wind with a small table, or JSON."""
+"""`fieldviz symmetry`: the verdict on the wind with its tables, or JSON."""
 
 from __future__ import annotations
 
 import json
 import textwrap
+from collections.abc import Sequence
 from pathlib import Path
 
+from fieldviz.commands.progress import tracked
 from fieldviz.snapshots.reader import read_snapshot
+from fieldviz.snapshots.series import SnapshotSeries, read_series
+from fieldviz.symmetry.displaced import DisplacedMidplane
+from fieldviz.symmetry.field_scores import FieldScores
 from fieldviz.symmetry.pairs import Pair
-from fieldviz.symmetry.wind_symmetry import Symmetry, wind_symmetry
+from fieldviz.symmetry.verdict import short_error
+from fieldviz.symmetry.wind_symmetry import Symmetry, wind_symmetry, wind_symmetry_of_series
 
 __all__ = ["run"]
 
 
 def run(
-    path: Path,
+    files: Sequence[Path],
     *,
     layout: Path | None,
     scale_heights: float,
@@ -22,26 +28,54 @@ def run(
     r_range: tuple[float, float] | None,
     as_json: bool,
 ) -> str:
-    """Judge one snapshot; return the text for stdout."""
-    result = wind_symmetry(
-        read_snapshot(path, layout=layout),
-        scale_heights=scale_heights,
-        thickness=thickness,
-        r_range=r_range,
-    )
+    """Judge a snapshot, or a series of several files or a pattern; return the text for stdout."""
+    given = list(files)
+    how = {"scale_heights": scale_heights, "thickness": thickness, "r_range": r_range}
+    is_pattern = set("*?[") & set(str(given[0])) and not given[0].exists()
+    if len(given) == 1 and not is_pattern:
+        name, paths, dropped = given[0].name, given, 0
+        result = wind_symmetry(read_snapshot(given[0], layout=layout), **how)  # type: ignore[arg-type]
+    else:
+        series = read_series(str(given[0]) if len(given) == 1 else given, layout=layout)
+        name, paths, dropped = _series_name(series), list(series.paths), len(series.dropped)
+        snapshots = tracked(series, "reading snapshots", len(series))
+        result = wind_symmetry_of_series(snapshots, **how)  # type: ignore[arg-type]
     if as_json:
-        return json.dumps({"file": str(path), **result.as_dict()}, indent=2, allow_nan=False)
-    return _text(path, result)
+        head: dict[str, object] = {"file": str(paths[0])}
+        if len(paths) > 1:
+            head = {"files": [str(path) for path in paths]}
+        return json.dumps({**head, **result.to_dict()}, indent=2, allow_nan=False)
+    return _text(name, result, dropped)
 
 
-def _text(path: Path, result: Symmetry) -> str:
-    rows: list[tuple[str, ...]] = [("pair", "upper", "lower", "score", "angle (degrees)", "word")]
-    rows += [_row(pair.name, pair) for pair in result.pairs]
-    lines = [result.sentence, "", f"{path.name}, t = {result.time:.6g}", *_aligned(rows), ""]
+def _series_name(series: SnapshotSeries) -> str:
+    first, last = series.paths[0].name, series.paths[-1].name
+    return first if len(series) == 1 else f"{first} to {last}"
+
+
+def _text(name: str, result: Symmetry, dropped: int) -> str:
+    when = f"t = {result.times[0]:.6g}"
+    if len(result.times) > 1:
+        when += f" to {result.times[-1]:.6g}, mean of {len(result.times)} snapshots"
+    rows: list[tuple[str, ...]] = [
+        ("pair", "upper", "lower", "score", "angle (degrees)", "two-sigma interval", "word")
+    ]
+    shown = [*result.pairs, *([result.lean] if result.lean is not None else [])]
+    rows += [_row(pair) for pair in shown]
+    lines = [result.sentence, "", f"{name}, {when}", *_aligned(rows), ""]
     lines += ["by radius", *_aligned(_band_rows(result)), ""]
-    remarks = [f"{pair.name}: {pair.unit}" for pair in result.pairs]
-    remarks += [f"{pair.name}: {note}" for pair in result.pairs for note in pair.notes]
+    if result.field_scores is not None:
+        lines += ["fields, scores of azimuth mean", *_aligned(_score_rows(result.field_scores)), ""]
+    if result.displaced is not None and result.displaced.scores:
+        lines += ["about the magnetic midplane", *_aligned(_displaced_rows(result.displaced)), ""]
+    lines += ["naming", _wrapped(result.naming), ""]
+    remarks = [f"{pair.name}: {pair.unit}" for pair in shown]
+    remarks += [f"{pair.name}: {_source(pair)}" for pair in shown]
+    remarks += [f"{pair.name}: {note}" for pair in shown for note in pair.notes]
     remarks += result.notes
+    remarks += result.field_scores.notes if result.field_scores is not None else ()
+    if dropped:
+        remarks.append(f"{dropped} files of a time that was there already were dropped")
     lines += ["what the numbers rest on", *map(_wrapped, remarks)]
     return "\n".join(lines)
 
@@ -50,20 +84,69 @@ def _wrapped(remark: str) -> str:
     return textwrap.fill(remark, 96, initial_indent="  - ", subsequent_indent="    ")
 
 
-def _row(name: str, pair: Pair) -> tuple[str, ...]:
-    angle = f"{round(pair.angle, 1) + 0.0:+.1f}"
-    if pair.angle_error is not None:
-        angle += f" ± {pair.angle_error:.1f}"
+def _source(pair: Pair) -> str:
+    known = pair.interval is not None
+    return f"errors from {pair.error_source}" if known else pair.error_source
+
+
+def _row(pair: Pair) -> tuple[str, ...]:
+    interval = "no estimate"
+    if pair.interval is not None:
+        interval = f"{_signed(pair.interval[0])} to {_signed(pair.interval[1])}"
     return (
-        name, f"{pair.upper:.4g}", f"{pair.lower:.4g}", f"{pair.score:+.3f}", angle, pair.word,
-    )  # fmt: skip
+        pair.name,
+        _with_error(f"{pair.upper:.4g}", pair.upper_error),
+        _with_error(f"{pair.lower:.4g}", pair.lower_error),
+        _with_error(f"{pair.score:+.3f}", pair.score_error),
+        _angle(pair.angle, pair.angle_error),
+        interval,
+        pair.word,
+    )
+
+
+def _with_error(text: str, error: float | None) -> str:
+    return text if error is None else f"{text} ± {error:.2g}"
+
+
+def _signed(angle: float) -> str:
+    # Adding zero turns -0.0 into 0.0.
+    return f"{round(angle, 1) + 0.0:+.1f}"
+
+
+def _angle(angle: float, error: float | None) -> str:
+    return _signed(angle) if error is None else f"{_signed(angle)} ± {short_error(error)}"
 
 
 def _band_rows(result: Symmetry) -> list[tuple[str, ...]]:
-    rows = [("radii", *(f"{pair.name} angle, word" for pair in result.pairs))]
+    rows = [("radii", *(f"{pair.name} score, angle, word" for pair in result.pairs))]
     for parts in zip(*(pair.bands for pair in result.pairs), strict=True):
-        words = (f"{round(band.angle, 1) + 0.0:+.1f} {band.word}" for band in parts)
+        words = (
+            f"{band.score:+.3f}  {_angle(band.angle, band.angle_error)}  {band.word}"
+            for band in parts
+        )
         rows.append((f"{parts[0].r_low:.3g} to {parts[0].r_high:.3g}", *words))
+    return rows
+
+
+def _score_rows(scores: FieldScores) -> list[tuple[str, ...]]:
+    bands = scores.scores[0].bands
+    radii = [f"{band.r_low:.3g} to {band.r_high:.3g}" for band in bands]
+    rows = [("field", "score", "full field", "word", *radii)]
+    for score in scores.scores:
+        parts = (f"{band.score:+.3f}" for band in score.bands)
+        total = f"{score.score:+.3f}", f"{score.full_score:+.3f}"
+        rows.append((score.name, *total, score.word, *parts))
+    return rows
+
+
+def _displaced_rows(displaced: DisplacedMidplane) -> list[tuple[str, ...]]:
+    rows: list[tuple[str, ...]] = [
+        ("field", "where", "about pi/2", f"about {displaced.displacement:+.2g} H", "word")
+    ]
+    rows += [
+        (s.name, s.region, f"{s.about_midplane:+.3f}", f"{s.about_displaced:+.3f}", s.word)
+        for s in displaced.scores
+    ]
     return rows
 
 

@@ -12,7 +12,13 @@ from collections.abc import Sequence
 
 from fieldviz.symmetry.pairs import Pair
 
-__all__ = ["verdict_sentence", "wind_word"]
+__all__ = ["NAMING", "short_error", "verdict_sentence", "wind_word"]
+
+NAMING = (
+    "'even' here means mirror-symmetric for every quantity: wind outward on both sides, B_phi "
+    "reversing at the midplane. Dynamo papers call that the dipole or 'A' type (their P = -1), and "
+    "some papers call 'odd' the state whose B_phi does not reverse: say which quantity is meant."
+)
 
 _ONE_SIDED = {"upper only": "one-sided upper", "lower only": "one-sided lower"}
 _MEANING = {
@@ -43,14 +49,14 @@ def wind_word(outflow: Pair, bend: Pair, torque: Pair | None) -> str:
 
 
 def verdict_sentence(word: str, pairs: Sequence[Pair], caveats: Sequence[str]) -> str:
-    """One sentence with the word, what it means here, and the angles.
+    """One sentence with the word, what it means here, and the angles that decide.
 
     Parameters
     ----------
     word : str
         From `wind_word`.
     pairs : sequence of Pair
-        Those that could be judged.
+        Those that could be judged, the outflow first.
     caveats : sequence of str
         What the sentence must not leave out, for example that the field is missing.
 
@@ -58,7 +64,9 @@ def verdict_sentence(word: str, pairs: Sequence[Pair], caveats: Sequence[str]) -
     -------
     str
     """
-    angles = ", ".join(f"{pair.name} angle {_angle(pair)}" for pair in pairs)
+    # Where the outflow decides, or all agree with it, its angle says enough.
+    told = pairs if word in ("odd", "mixed") else pairs[:1]
+    angles = ", ".join(f"{pair.name} angle {_angle(pair)}" for pair in told)
     rest = "; ".join([angles, *caveats])
     name = f"{word} wind" if word in ("even", "odd", "mixed") else word
     return f"{name}: {_meaning(word, pairs)} ({rest})"
@@ -74,16 +82,22 @@ def _meaning(word: str, pairs: Sequence[Pair]) -> str:
         carries = ", and the field carries no net angular momentum" if "torque" in names else ""
         return f"gas leaves on both sides but bends opposite ways above and below{carries}"
     words = _listed([f"the {pair.name} is {pair.word}" for pair in pairs])
-    return f"the pairs disagree: {words}"
+    settled = not {"mixed", "none"} & {pair.word for pair in pairs}
+    return f"the pairs {'disagree' if settled else 'do not settle it'}: {words}"
 
 
 def _listed(parts: Sequence[str]) -> str:
     return parts[0] if len(parts) == 1 else f"{', '.join(parts[:-1])} and {parts[-1]}"
 
 
+def short_error(error: float) -> str:
+    """One decimal of a degree; one digit where that would be nothing."""
+    return f"{error:.1f}" if error >= 0.05 or error == 0 else f"{error:.1g}"
+
+
 def _angle(pair: Pair) -> str:
     if pair.angle != pair.angle:
         return "undefined"
-    error = "" if pair.angle_error is None else f" ± {pair.angle_error:.1f}"
+    error = "" if pair.angle_error is None else f" ± {short_error(pair.angle_error)}"
     # Adding zero turns -0.0 into 0.0.
     return f"{round(pair.angle, 1) + 0.0:+.1f}{error} degrees"

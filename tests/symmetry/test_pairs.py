@@ -5,6 +5,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from fieldviz.symmetry.jackknife import Errors
 from fieldviz.symmetry.pairs import judge_pair, pair_angle, pair_class, pair_score
 
 # Recomputed here by hand from P = 2 u d/(u^2 + d^2) and atan2(d, u) - 45 degrees.
@@ -101,3 +102,47 @@ def test_a_side_without_value_counts_as_zero():
     assert pair.word == "upper only"
     assert np.isnan(pair.score)
     assert np.isnan(pair.angle)
+
+
+def with_error(upper, lower, error, half_width=None, n_bands=1):
+    angles = np.full(n_bands, error)
+    sides = np.full(2, np.radians(error) * np.hypot(upper, lower))
+    half = 2 * error if half_width is None else half_width
+    errors = Errors(sides, 0.01, error, angles, half, 8, "8 blocks")
+    bands = np.full(n_bands, upper / n_bands), np.full(n_bands, lower / n_bands)
+    edges = np.arange(1.0, n_bands + 2)
+    return judge_pair("outflow", (upper, lower), bands, edges, scale=0, unit="", errors=errors)
+
+
+def test_an_interval_that_reaches_into_another_class_is_mixed():
+    """The classes meet at 26.57 degrees, where the ratio is 1/3."""
+    lower = np.tan(np.radians(45 - 20.0))
+    assert with_error(1.0, lower, 3.0).word == "even"
+    assert with_error(1.0, lower, 3.4).word == "mixed"
+    assert with_error(1.0, 0.0, 5.0).word == "upper only"
+    assert with_error(1.0, 0.0, 10.0).word == "mixed"
+
+
+def test_below_three_errors_is_none():
+    """|u| + |d| = 2 and an error of 2 radians(e) meet at e = 19.1 degrees."""
+    assert with_error(1.0, 1.0, 18.0, half_width=1.0).word == "even"
+    assert with_error(1.0, 1.0, 20.0, half_width=1.0).word == "none"
+
+
+def test_scores_within_the_interval_of_the_angle():
+    """Near +1 the score is flat: the interval of the angle tells what that of the score hides."""
+    pair = with_error(1.0, 1.0, 5.0)
+    assert pair.interval == pytest.approx((-10, 10))
+    assert pair.score_interval == pytest.approx((np.cos(np.radians(20)), 1))
+    pair = with_error(1.0, 0.8, 1.0)
+    assert pair.score == pytest.approx(0.9756, abs=1e-4)
+    assert pair.interval[1] < -4
+    assert pair.score_interval[1] < 0.99
+
+
+def test_errors_stand_with_the_pair_and_its_bands():
+    pair = with_error(1.0, 0.9, 2.0, n_bands=3)
+    assert pair.angle_error == 2.0
+    assert [band.angle_error for band in pair.bands] == [2.0] * 3
+    assert judge([1], [1]).angle_error is None
+    assert judge([1], [1]).interval is None
