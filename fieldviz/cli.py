@@ -157,7 +157,7 @@ def render(
 
 @app.command
 def symmetry(
-    file: Path,
+    files: tuple[Path, ...],
     *,
     layout: Layout = None,
     scale_heights: float = 4.0,
@@ -168,11 +168,12 @@ def symmetry(
     """Say whether the wind is even, odd or one-sided, with the numbers.
 
     Example: fieldviz symmetry disc.h5 --r-range 1.2 4.5
+    Example: fieldviz symmetry "run/disc_*.h5" --json
 
     Parameters
     ----------
-    file
-        Snapshot.
+    files
+        Snapshot, or several files, or a quoted pattern: a series.
     layout
         Layout description of a foreign file.
     scale_heights
@@ -187,7 +188,7 @@ def symmetry(
     from fieldviz.commands.symmetry import run
 
     return run(
-        file, layout=layout, scale_heights=scale_heights, thickness=thickness, r_range=r_range,
+        files, layout=layout, scale_heights=scale_heights, thickness=thickness, r_range=r_range,
         as_json=as_json,
     )  # fmt: skip
 
@@ -201,17 +202,21 @@ def lines(
     count: int = 200,
     radii: Annotated[tuple[float, ...], Parameter(consume_multiple=True)] = (),
     points: Path | None = None,
-    field: Literal["magnetic", "velocity"] = "magnetic",
+    field: Literal["magnetic", "velocity", "poloidal-velocity"] = "magnetic",
     interpolation: Literal["auto", "flux", "linear"] = "auto",
     direction: Literal["both", "forward", "backward"] = "both",
     tolerance: float = 1e-6,
     sample: Annotated[tuple[str, ...], Parameter(consume_multiple=True)] = (),
+    height: float = 4.0,
     layout: Layout = None,
     as_json: Annotated[bool, Parameter("--json")] = False,
 ) -> str:
     """Trace field lines or streamlines and say where they end.
 
+    Streamlines also tell of the wind on each side: invariants, critical points, lever arms.
+
     Example: fieldviz lines disc.h5 --seeds equal-flux --count 200 -o lines.vtp
+    Example: fieldviz lines disc.h5 --seeds wind --field poloidal-velocity -o wind.vtp
 
     Parameters
     ----------
@@ -238,6 +243,8 @@ def lines(
         Largest error of a step over r, for linear interpolation.
     sample
         Fields to sample along the lines.
+    height
+        Where wind seeds lie and from where the wind is judged, in scale heights.
     layout
         Layout description of a foreign file.
     as_json
@@ -246,7 +253,7 @@ def lines(
     from fieldviz.commands.lines import LineRequest, run
 
     request = LineRequest(
-        seeds, count, radii, points, field, interpolation, direction, tolerance, sample
+        seeds, count, radii, points, field, interpolation, direction, tolerance, sample, height
     )
     return run(file, output, layout=layout, request=request, as_json=as_json)
 

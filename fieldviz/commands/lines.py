@@ -6,10 +6,12 @@ import json
 from collections import Counter
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 
 import numpy as np
 
+from fieldviz.commands.wind_lines import wind_lines, wind_text
 from fieldviz.errors import FieldvizError
 from fieldviz.lines.line_set import LineSet
 from fieldviz.lines.seeds import equal_flux_seeds, even_area_seeds
@@ -42,12 +44,14 @@ class LineRequest:
     points : Path or None
         CSV of r, theta, phi, for given points.
     field : str
-        "magnetic" or "velocity".
+        "magnetic", "velocity" or "poloidal-velocity".
     interpolation : str
         "flux", "linear", or "auto": flux where the field is on faces.
     direction : str
     tolerance : float
     sample : sequence of str
+    height : float
+        Where wind seeds lie and the wind is judged from, in H.
     """
 
     seeds: str
@@ -59,6 +63,7 @@ class LineRequest:
     direction: str
     tolerance: float
     sample: Sequence[str]
+    height: float = 4.0
 
 
 def run(
@@ -74,19 +79,27 @@ def run(
         interpolation = "flux" if on_faces and request.field == "magnetic" else "linear"
     lines = trace_lines(
         snapshot,
-        request.field,
+        request.field.removeprefix("poloidal-"),
         seeds,
         direction=request.direction,
         interpolation=interpolation,
         tolerance=request.tolerance,
+        poloidal=request.field.startswith("poloidal-"),
         sample=request.sample,
     )
+    wind = None
+    if lines.name == "velocity":
+        lines, wind = wind_lines(snapshot, lines, request.height)
     if write and output:
         write(output, lines)
     summary = _summary(lines, request, interpolation)
+    if wind:
+        summary["wind"] = wind
     if as_json:
         return json.dumps(
-            {"file": str(path), "output": output and str(output), **summary}, indent=2
+            {"file": str(path), "output": output and str(output), **summary},
+            indent=2,
+            allow_nan=False,
         )
     return _text(path, output, summary)
 
@@ -104,7 +117,7 @@ def _seeds(snapshot: Snapshot, request: LineRequest) -> Array:
     makers: dict[str, Callable[[Snapshot, int], Array]] = {
         "equal-flux": equal_flux_seeds,
         "even-area": even_area_seeds,
-        "wind": wind_seeds,
+        "wind": partial(wind_seeds, scale_heights=request.height),
     }
     return makers[request.seeds](snapshot, request.count)
 
@@ -195,4 +208,7 @@ def _text(path: Path, output: Path | None, summary: dict[str, object]) -> str:
     rows.append(f"midplane  {summary['cross_the_midplane']} lines cross it")
     rows += ["", "  lines  start         end"]
     rows += [f"  {end['lines']:5d}  {end['start']:12s}  {end['end']}" for end in ends]
+    wind = summary.get("wind")
+    if isinstance(wind, dict):
+        rows += wind_text(wind)
     return "\n".join([*rows, "", f"written to {output}"] if output else rows)

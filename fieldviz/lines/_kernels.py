@@ -218,19 +218,21 @@ def _ended(p, slope0, q, slope1, h, gained, limits, room, may_close, seed, width
 @njit(cache=True, nogil=True, inline="always")
 def _step(field, first, axes, x, theta, phi, ax, at, ap, h, sign, i, j, k):
     """One step of the embedded pair: end, slope and strength there, the estimated error, cell."""
-    half, later = 0.5 * h, 0.75 * h * sign
-    bx, bt, bp, _, i, j, k = _direction(
-        field, first, axes, x + half * ax, theta + half * at, phi + half * ap, i, j, k
-    )
-    cx, ct, cp, _, i, j, k = _direction(
-        field, first, axes, x + later * bx, theta + later * bt, phi + later * bp, i, j, k
-    )
-    s1, s2, s3 = 2 / 9 * h, 1 / 3 * h * sign, 4 / 9 * h * sign
-    qx = x + s1 * ax + s2 * bx + s3 * cx
-    qt = theta + s1 * at + s2 * bt + s3 * ct
-    qp = phi + s1 * ap + s2 * bp + s3 * cp
-    fx, ft, fp, size, i, j, k = _direction(field, first, axes, qx, qt, qp, i, j, k)
-    e1, e2, e3, e4 = -5 / 72 * h, 1 / 12 * h * sign, 1 / 9 * h * sign, -1 / 8 * h * sign
+    h2 = sign * h  # slopes from here on are of the field, not yet of the walk
+    bx = bt = bp = cx = ct = cp = fx = ft = fp = size = 0.0
+    qx, qt, qp = x + 0.5 * h * ax, theta + 0.5 * h * at, phi + 0.5 * h * ap
+    for stage in range(3):  # a loop, as each copy of the interpolation takes seconds to compile
+        if stage == 1:
+            bx, bt, bp = fx, ft, fp
+            qx, qt, qp = x + 0.75 * h2 * bx, theta + 0.75 * h2 * bt, phi + 0.75 * h2 * bp
+        elif stage == 2:
+            cx, ct, cp = fx, ft, fp
+            s1, s2, s3 = 2 / 9 * h, 1 / 3 * h2, 4 / 9 * h2
+            qx = x + s1 * ax + s2 * bx + s3 * cx
+            qt = theta + s1 * at + s2 * bt + s3 * ct
+            qp = phi + s1 * ap + s2 * bp + s3 * cp
+        fx, ft, fp, size, i, j, k = _direction(field, first, axes, qx, qt, qp, i, j, k)
+    e1, e2, e3, e4 = -5 / 72 * h, 1 / 12 * h2, 1 / 9 * h2, -1 / 8 * h2
     error = max(
         abs(e1 * ax + e2 * bx + e3 * cx + e4 * fx), abs(e1 * at + e2 * bt + e3 * ct + e4 * ft)
     )
@@ -328,7 +330,7 @@ def _follow(
     lines_x, lines_theta, lines_phi = lattice
     period = rules[4]
     size = 3 * X.shape[1] * T.shape[1] * P.shape[1]
-    count, reason = 0, GOING_ON
+    count, reason = np.int64(0), GOING_ON  # a plain 0 would be a type of its own, compiled apart
     while count < points.shape[0] and reason == GOING_ON:
         b = cell[3]
         # One view of each array for a block: views are counted, which takes as long as a step.
@@ -378,32 +380,3 @@ def start_blocks(places, lines_x, lines_theta, lines_phi, table, cells, turns):
             turns[line] = np.floor((phi - local) / period + 0.5)
             places[line, 2] = local
             cells[line, 3] = _lattice_block(x, theta, local, lines_x, lines_theta, lines_phi, table)
-
-
-@njit(cache=True, nogil=True, parallel=True)
-def gather_rows(points, counts, starts, gathered):
-    """Copy the filled part of each line's buffer to its place."""
-    for n in prange(counts.shape[0]):
-        for m in range(counts[n]):
-            for axis in range(3):
-                gathered[starts[n] + m, axis] = points[n, m, axis]
-
-
-@njit(cache=True, nogil=True, parallel=True)
-def lay_out(points, counts, starts, firsts, step, line_points):
-    """Lay points found from the seed outwards into their lines, forwards (+1) or backwards (-1)."""
-    for n in prange(counts.shape[0]):
-        for m in range(counts[n]):
-            for axis in range(3):
-                line_points[firsts[n] + step * m, axis] = points[starts[n] + m, axis]
-
-
-@njit(cache=True, nogil=True)
-def largest_number(values):
-    """Largest size of a finite value, 0 without one."""
-    largest = 0.0
-    for value in values:
-        size = abs(value)
-        if np.isfinite(size) and size > largest:
-            largest = size
-    return largest

@@ -42,7 +42,7 @@ class Half:
 
     def lay_out(self, seed_at: IntArray, sign: int, line_points: Array) -> None:
         """Lay the points down from each seed's place, forwards (+1) or backwards (-1)."""
-        from fieldviz.lines._kernels import lay_out
+        from fieldviz.lines._point_kernels import lay_out
 
         reached = seed_at + sign
         for lines, many, points in self.pieces:
@@ -65,7 +65,7 @@ def followed_to_the_end(
     least_room : int
         Smallest useful room of a line in the buffer.
     """
-    from fieldviz.lines import _kernels
+    from fieldviz.lines._point_kernels import gather_rows
 
     pieces = []
     active = np.flatnonzero(reason == reasons.GOING_ON)
@@ -75,7 +75,7 @@ def followed_to_the_end(
         counts = np.zeros(len(active), dtype=np.int64)
         advance(active, points, counts)
         gathered = np.empty((counts.sum(), 3))
-        _kernels.gather_rows(points, counts, np.cumsum(counts) - counts, gathered)
+        gather_rows(points, counts, np.cumsum(counts) - counts, gathered)
         pieces.append((active, counts, gathered))
         active = active[reason[active] == reasons.GOING_ON]
     return pieces

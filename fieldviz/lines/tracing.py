@@ -129,7 +129,7 @@ class LinearWalk:
         most_steps: int,
         poloidal: bool,
     ) -> None:
-        from fieldviz.lines._kernels import largest_number
+        from fieldviz.lines._point_kernels import largest_number
 
         self.grid = snapshot.grid
         self.field = _haloed_vectors(snapshot, name, poloidal)

@@ -95,3 +95,41 @@ def test_bad_input_is_one_line_and_exit_1(capsys, tmp_path, monkeypatch, disc_fi
     assert err.startswith("fieldviz: Cannot")
     assert err.count("\n") == 1
     assert not list(tmp_path.iterdir())
+
+
+def test_streamlines_tell_of_the_wind(capsys, tmp_path, disc_file):
+    target = tmp_path / "wind.vtp"
+    code, out, _ = call(
+        capsys, "lines", disc_file, "--seeds", "wind", "--field", "poloidal-velocity", "--height",
+        4.5, "--count", 12, "-o", target, "--json",
+    )  # fmt: skip
+    assert code == 0
+    sides = json.loads(out)["wind"]["sides"]
+    assert sides["upper"]["lines"] == sides["lower"]["lines"] == 6
+    for side in sides.values():
+        assert sum(side["drift_words"]["k"].values()) == 6
+        assert 1 < side["lever_arm_momentum_median"] < 20
+    written = pv.read(target)
+    k = written["invariant_k"]
+    height = np.arcsin(written.points[:, 2] / np.linalg.norm(written.points, axis=1))
+    # Mass leaves along B above and against it below: k changes sign with the side.
+    assert np.nanmedian(k[height > 0.45]) > 0 > np.nanmedian(k[height < -0.45])
+    code, out, _ = call(
+        capsys, "lines", disc_file, "--seeds", "wind", "--field", "velocity", "--count", 12
+    )
+    assert code == 0
+    assert "upper wind, 6 streamlines" in out
+    assert "lever arm" in out
+
+
+def test_streamlines_without_a_field_say_why_the_wind_is_not_judged(capsys, tmp_path, disc_file):
+    bare = tmp_path / "bare.h5"
+    disc = fv.read_snapshot(disc_file)
+    kept = {n: disc.cell(n) for n in disc.cell_names if not n.startswith("magnetic")}
+    fv.write_snapshot(bare, fv.Snapshot.from_grid(disc.grid, cells=kept))
+    code, out, _ = call(
+        capsys, "lines", bare, "--seeds", "wind", "--field", "velocity", "--count", 4
+    )
+    assert code == 0
+    assert "not judged: " in out
+    assert "magnetic" in out
