@@ -226,11 +226,11 @@ def lines(
         Name ending in .vtp (VTK), .csv or .npz; without it only the summary is printed.
     seeds
         equal-flux: every line carries the same flux. even-area: also where the field is weak.
-        sheets: along flux sheets of given --radii. wind: by mass flux, each side apart.
+        sheets: along the flux sheets found, or at --radii. wind: by mass flux, each side apart.
     count
         Number of lines.
     radii
-        Radii of the sheets.
+        Radii of the sheets; found by default.
     points
         CSV file of r,theta,phi in radians.
     field

@@ -20,6 +20,7 @@ from fieldviz.lines.seeds_sheets import sheet_seeds
 from fieldviz.lines.seeds_wind import wind_seeds
 from fieldviz.lines.tracing import trace_lines
 from fieldviz.output import whole_file
+from fieldviz.sheets.flux_sheets import find_flux_sheets
 from fieldviz.snapshots.reader import read_snapshot
 from fieldviz.vtk_data.files import write_poly_data
 from fieldviz.vtk_data.lines_to_vtk import lines_to_vtk
@@ -40,7 +41,7 @@ class LineRequest:
         "equal-flux", "even-area", "sheets", "wind" or "points".
     count : int
     radii : sequence of float
-        Of the sheets, for seeds along sheets.
+        Of the sheets, for seeds along sheets; found if empty.
     points : Path or None
         CSV of r, theta, phi, for given points.
     field : str
@@ -108,12 +109,13 @@ def _seeds(snapshot: Snapshot, request: LineRequest) -> Array:
     if request.seeds == "points":
         return given_seeds(_read_points(request.points))
     if request.seeds == "sheets":
-        if not request.radii:
+        sheets = request.radii or find_flux_sheets(snapshot)
+        if not sheets:
             raise FieldvizError(
-                "Cannot place seeds along sheets: expected the sheets' radii, got none; name them "
-                "with --radii."
+                "Cannot place seeds along sheets: expected at least one flux sheet, found none; "
+                "name radii with --radii, or use other seeds."
             )
-        return sheet_seeds(snapshot, list(request.radii), request.count)
+        return sheet_seeds(snapshot, list(sheets), request.count)
     makers: dict[str, Callable[[Snapshot, int], Array]] = {
         "equal-flux": equal_flux_seeds,
         "even-area": even_area_seeds,

@@ -18,9 +18,8 @@ cutting a grid into blocks of three or more cells changes nothing. At a level ju
 cell, from a parabola along each axis through the other level's cells: also second order there. At
 the walls in r and theta derivatives are one-sided, second order.
 
-Face-centred fields enter the curl and the gradient as cell values, the mean of two faces. The dual
-loops through faces give the current on edges; its mean over the four edges of a cell reaches the
-same cells as the slopes do, so nothing would be gained. The divergence of a face-centred field is
+Face-centred fields enter the curl and the gradient as cell values, the mean of two faces; the dual
+loops through the faces themselves are in `edge_current`. The divergence of a face-centred field is
 the exact flux out of each cell over its volume.
 """
 

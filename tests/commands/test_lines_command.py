@@ -52,6 +52,7 @@ def test_every_output_holds_the_same_lines(capsys, tmp_path, disc_file, suffix):
     ("options", "phrase"),
     [
         (["--seeds", "sheets", "--radii", 1.4, 3.0], "sheets seeds"),
+        (["--seeds", "sheets"], "sheets seeds"),
         (["--seeds", "wind", "--field", "velocity", "--direction", "forward"], "not traced"),
         (["--seeds", "even-area", "--interpolation", "linear"], "linear interpolation"),
     ],
@@ -78,7 +79,6 @@ def test_given_points(capsys, tmp_path, disc_file):
         ["--count", 0],
         ["--count", 100_000_000],
         ["--tolerance", 0, "--interpolation", "linear"],
-        ["--seeds", "sheets"],
         ["--seeds", "points"],
         ["--seeds", "points", "--points", "nowhere.csv"],
         ["--sample", "temperature"],
@@ -95,6 +95,17 @@ def test_bad_input_is_one_line_and_exit_1(capsys, tmp_path, monkeypatch, disc_fi
     assert err.startswith("fieldviz: Cannot")
     assert err.count("\n") == 1
     assert not list(tmp_path.iterdir())
+
+
+def test_seeds_along_sheets_where_there_are_none(capsys, tmp_path, disc_file):
+    smooth, disc = tmp_path / "smooth.h5", fv.read_snapshot(disc_file)
+    theta = disc.grid.cell_centres(0)[1][:, None] + np.zeros(disc.grid.block_shape)
+    cells = {n: disc.cell(n) for n in ("density", "pressure")}
+    cells |= {"magnetic_r": np.cos(theta)[None], "magnetic_theta": -np.sin(theta)[None]}
+    fv.write_snapshot(smooth, fv.Snapshot.from_grid(disc.grid, cells=cells))
+    code, _, err = call(capsys, "lines", smooth, "--seeds", "sheets")
+    assert code == 1
+    assert "expected at least one flux sheet, found none" in err
 
 
 def test_streamlines_tell_of_the_wind(capsys, tmp_path, disc_file):
