@@ -24,7 +24,7 @@ WEAK, NO_DATA, LENGTH, CLOSED, STEPS, OUTSIDE = range(6, 12)
 _SAFETY = 0.9
 # Roots near the cube root that the order asks for, on the careful side: grow by the fourth root of
 # the error, shrink by its square root. A cube root takes as long as a third of a step.
-_LARGEST_GROWTH = 5.0
+_GROWTH, _SMALL_ERROR = 2.0, 0.04
 _SMALLEST_SHARE = 1e-7  # of the longest step: one that shrinks below it ends the line
 _SAME_POINT = 1e-14
 _CLOSED_CELLS = 1e-3
@@ -285,7 +285,8 @@ def _within_block(
             h *= max(0.2, _SAFETY / np.sqrt(error)) if np.isfinite(error) else 0.25
         if reason != GOING_ON:
             break
-        h_next = h * min(_LARGEST_GROWTH, _SAFETY / np.sqrt(np.sqrt(error)))
+        # No root where it would tell little: the next step waits for it.
+        h_next = h * (_GROWTH if error < _SMALL_ERROR else _SAFETY / np.sqrt(np.sqrt(error)))
         r_end = np.exp(qx)
         gained = _arc(r, ax, r_end, fx, h)
         inside = box[0] <= qx < box[1] and box[2] <= qt < box[3] and box[4] <= qp < box[5]
