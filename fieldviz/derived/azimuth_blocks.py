@@ -6,6 +6,7 @@ import os
 from collections.abc import Callable, Iterable, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from typing import TypeVar
 
 import numpy as np
 
@@ -20,7 +21,10 @@ __all__ = [
     "RunningMoments",
     "block_moments",
     "over_kepler",
+    "shared_out",
 ]
+
+_Result = TypeVar("_Result")
 
 Pair = tuple[str, str]
 Formula = Callable[[Snapshot, int], Array | tuple[Array, Array]]
@@ -127,7 +131,7 @@ def block_moments(
             )  # fmt: skip
         return left_out
 
-    left_out = _shared_out(work, n_theta, n_phi * n_theta * n_r)
+    left_out = sum(shared_out(work, n_theta, n_phi * n_theta * n_r))
     tables = [np.ascontiguousarray(np.moveaxis(table, 1, 0)) for table in found]
     return BlockMoments(
         weight,
@@ -140,13 +144,29 @@ def block_moments(
     )
 
 
-def _shared_out(work: Callable[[Sequence[int]], int], n_rows: int, n_cells: int) -> int:
-    """Rows shared out to threads; each row is worked out alike whatever their number."""
-    threads = max(1, min(_THREADS, n_cells // _LEAST_PER_THREAD, n_rows))
+def shared_out(
+    work: Callable[[Sequence[int]], _Result], n_pieces: int, n_cells: int
+) -> list[_Result]:
+    """Pieces shared out to threads; each is worked out alike whatever their number.
+
+    Parameters
+    ----------
+    work : function of a sequence of int
+        Works out the pieces of these numbers.
+    n_pieces : int
+    n_cells : int
+        Of all pieces: a few are not worth a second thread.
+
+    Returns
+    -------
+    list
+        What `work` gave on each thread.
+    """
+    threads = max(1, min(_THREADS, n_cells // _LEAST_PER_THREAD, n_pieces))
     if threads == 1:
-        return work(range(n_rows))
+        return [work(range(n_pieces))]
     with ThreadPoolExecutor(threads) as pool:
-        return sum(pool.map(work, [range(n, n_rows, threads) for n in range(threads)]))
+        return list(pool.map(work, [range(n, n_pieces, threads) for n in range(threads)]))
 
 
 def _source(

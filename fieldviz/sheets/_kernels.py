@@ -192,3 +192,18 @@ def current_in_sheets(
                         sums[page, 3] += volume
                         sums[page, 4] += volume * x
                         sums[page, 5] += volume * x * x
+
+
+@njit(cache=True, nogil=True, parallel=True)
+def highest_rows(values, rows):
+    """First row of the largest finite value of each column of (pages, n, m); 0 without any."""
+    pages, n, m = values.shape
+    for page in prange(pages):
+        best = np.full(m, -np.inf)
+        rows[page] = 0
+        for j in range(n):
+            for i in range(m):
+                x = values[page, j, i]
+                if x - x == 0.0 and x > best[i]:
+                    best[i] = x
+                    rows[page, i] = j

@@ -241,8 +241,11 @@ def highest(values: Array, heights: Array) -> tuple[Array, Array]:
     found : (n_phi, n_r) array
         NaN there.
     """
+    from fieldviz.sheets._kernels import highest_rows
+
     n = values.shape[1]
-    rows = np.where(np.isfinite(values), values, -np.inf).argmax(axis=1)
+    rows = np.empty((values.shape[0], values.shape[2]), dtype=np.int64)
+    highest_rows(values, rows)
     inner = np.clip(rows, 1, n - 2)
     y = [np.take_along_axis(values, (inner + m)[:, None], axis=1)[:, 0] for m in (-1, 0, 1)]
     x = [heights[inner + m] for m in (-1, 0, 1)]

@@ -107,9 +107,9 @@ def flux_maps(
     # Coarse blocks first, so that on a cone at a level jump the fine faces stand.
     met = {int(b) for one in sums for b in one.blocks}
     for block in sorted(met, key=lambda block: (level[block], block)):
-        upward = -faces_of(block) * np.sin(grid.theta_edges[block])[:, None]
+        faces = faces_of(block)
         for one in sums:
-            one.add(block, upward)
+            one.add(block, faces, np.sin(grid.theta_edges[block]))
     from_faces = "magnetic_theta" in snapshot.faces
     return [one.result(r_range, from_faces) for one in sums]
 
@@ -130,13 +130,15 @@ class _SurfaceSum:
         self.total = np.zeros((len(self.phi_edges) - 1, len(self.r_edges) - 1))
         self.covered = np.zeros_like(self.total)
 
-    def add(self, block: int, upward: Array) -> None:
+    def add(self, block: int, southward: Array, sine: Array) -> None:
         found = np.flatnonzero(self.blocks == block)
         if not found.size:
             return
         weights = _band_weights(self.cosines[block], self.middle, self.half)
         used = np.flatnonzero(weights)
-        mean = np.einsum("j,kji->ki", weights[used], upward[:, used])
+        # Only the rows that are needed, in double precision.
+        upward = -southward[:, used].astype(np.float64) * sine[used][:, None]
+        mean = np.einsum("j,kji->ki", weights[used], upward)
         k, phi_place = _covered_cells(self.phi_places[found[0]])
         i, r_place = _covered_cells(self.r_places[found[0]])
         place = np.ix_(phi_place, r_place)
@@ -221,7 +223,7 @@ def _band_weights(falling: Array, middle: float, half: float) -> Array:
 def _theta_faces(snapshot: Snapshot) -> Callable[[int], Array]:
     """A function of a block: B_theta on its faces across theta, (n_phi, n_theta + 1, n_r)."""
     if "magnetic_theta" in snapshot.faces:
-        return lambda block: snapshot.faces.block("magnetic_theta", block).astype(np.float64)
+        return lambda block: snapshot.faces.block("magnetic_theta", block)
     haloed = halo_array(snapshot.grid, snapshot.cell("magnetic_theta"))
     with_ghosts = halo_grid(snapshot.grid).theta_edges
 

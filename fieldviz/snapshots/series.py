@@ -14,7 +14,7 @@ from fieldviz.wedge.snapshot import Snapshot
 if TYPE_CHECKING:
     from fieldviz.snapshots.layout_description import LayoutDescription
 
-__all__ = ["SnapshotSeries", "read_series"]
+__all__ = ["SnapshotSeries", "expanded", "read_series"]
 
 
 class SnapshotSeries(Sequence[Snapshot]):
@@ -28,6 +28,8 @@ class SnapshotSeries(Sequence[Snapshot]):
         Their code times, strictly increasing.
     dropped : tuple of Path
         Files left out because another one, earlier in name, has the same time.
+    layout : str, Path, LayoutDescription or None
+        How the files are to be read.
     """
 
     def __init__(
@@ -41,15 +43,15 @@ class SnapshotSeries(Sequence[Snapshot]):
         self.paths = tuple(paths)
         self.times = tuple(times)
         self.dropped = tuple(dropped)
-        self._layout = layout
+        self.layout = layout
 
     def __len__(self) -> int:
         return len(self.paths)
 
     def __getitem__(self, index):  # type: ignore[no-untyped-def]
         if isinstance(index, slice):
-            return SnapshotSeries(self.paths[index], self.times[index], layout=self._layout)
-        return read_snapshot(self.paths[index], layout=self._layout)
+            return SnapshotSeries(self.paths[index], self.times[index], layout=self.layout)
+        return read_snapshot(self.paths[index], layout=self.layout)
 
     def __iter__(self) -> Iterator[Snapshot]:
         return (self[index] for index in range(len(self)))
@@ -84,7 +86,7 @@ def read_series(
     SnapshotFileError
         If nothing matches, or a file cannot be read.
     """
-    paths = _expanded(paths_or_pattern)
+    paths = expanded(paths_or_pattern)
     timed = sorted((read_snapshot(path, layout=layout).time, str(path), path) for path in paths)
     kept: list[tuple[float, Path]] = []
     dropped: list[Path] = []
@@ -98,7 +100,8 @@ def read_series(
     )
 
 
-def _expanded(paths_or_pattern: str | Path | Iterable[str | Path]) -> list[Path]:
+def expanded(paths_or_pattern: str | Path | Iterable[str | Path]) -> list[Path]:
+    """Files that are meant, each once, in order of name; SnapshotFileError if there are none."""
     if isinstance(paths_or_pattern, str | Path):
         pattern = str(paths_or_pattern)
         found = sorted({Path(name) for name in glob.glob(pattern)}) or (  # noqa: PTH207 - may be absolute

@@ -1,0 +1,1 @@
+"""All numbers of one snapshot together, and over a series."""
