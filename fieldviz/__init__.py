@@ -24,7 +24,11 @@ if TYPE_CHECKING:
     from fieldviz.derived.vector_calculus import curl as curl
     from fieldviz.derived.vector_calculus import divergence as divergence
     from fieldviz.derived.vector_calculus import gradient as gradient
+    from fieldviz.diagnostics.series_numbers import measure_series as measure_series
+    from fieldviz.diagnostics.snapshot_numbers import measure as measure
+    from fieldviz.diagnostics.space_time import space_time as space_time
     from fieldviz.errors import FieldvizError as FieldvizError
+    from fieldviz.lines.azimuth_mean import azimuth_mean as azimuth_mean
     from fieldviz.lines.critical_points import critical_points as critical_points
     from fieldviz.lines.line_invariants import line_invariants as line_invariants
     from fieldviz.lines.line_set import LineSet as LineSet
@@ -41,6 +45,7 @@ if TYPE_CHECKING:
     from fieldviz.lines.seeds_wind import wind_plan as wind_plan
     from fieldviz.lines.seeds_wind import wind_seeds as wind_seeds
     from fieldviz.lines.tracing import trace_lines as trace_lines
+    from fieldviz.report.write import write_report as write_report
     from fieldviz.scenes.render import render as render
     from fieldviz.sheets.current_sheets import current_sheets as current_sheets
     from fieldviz.sheets.flux_sheets import find_flux_sheets as find_flux_sheets
@@ -51,6 +56,7 @@ if TYPE_CHECKING:
     from fieldviz.snapshots.series import read_series as read_series
     from fieldviz.snapshots.writer import write_snapshot as write_snapshot
     from fieldviz.symmetry.wind_symmetry import wind_symmetry as wind_symmetry
+    from fieldviz.symmetry.wind_symmetry import wind_symmetry_of_series as wind_symmetry_of_series
     from fieldviz.vtk_data.snapshot_to_vtk import to_vtk as to_vtk
     from fieldviz.wedge.demo import SaltmarshDisc as SaltmarshDisc
     from fieldviz.wedge.demo import demo_disc as demo_disc
@@ -71,6 +77,7 @@ _HOMES = {
     "SnapshotSeries": "fieldviz.snapshots.series",
     "Unit": "fieldviz.wedge.units",
     "UnitScales": "fieldviz.wedge.units",
+    "azimuth_mean": "fieldviz.lines.azimuth_mean",
     "cone_seeds": "fieldviz.lines.seeds_shapes",
     "critical_points": "fieldviz.lines.critical_points",
     "curl": "fieldviz.derived.vector_calculus",
@@ -91,6 +98,8 @@ _HOMES = {
     "line_invariants": "fieldviz.lines.line_invariants",
     "mach_numbers": "fieldviz.derived.mach",
     "magnetic_midplane": "fieldviz.sheets.magnetic_midplane",
+    "measure": "fieldviz.diagnostics.snapshot_numbers",
+    "measure_series": "fieldviz.diagnostics.series_numbers",
     "outflow": "fieldviz.wind.outflow",
     "plasma": "fieldviz.derived.plasma",
     "read_series": "fieldviz.snapshots.series",
@@ -101,6 +110,7 @@ _HOMES = {
     "sample": "fieldviz.wedge.sampling",
     "sheet_plan": "fieldviz.lines.seeds_sheets",
     "sheet_seeds": "fieldviz.lines.seeds_sheets",
+    "space_time": "fieldviz.diagnostics.space_time",
     "sphere_seeds": "fieldviz.lines.seeds_shapes",
     "stresses": "fieldviz.derived.stresses",
     "to_vtk": "fieldviz.vtk_data.snapshot_to_vtk",
@@ -110,6 +120,8 @@ _HOMES = {
     "wind_plan": "fieldviz.lines.seeds_wind",
     "wind_seeds": "fieldviz.lines.seeds_wind",
     "wind_symmetry": "fieldviz.symmetry.wind_symmetry",
+    "wind_symmetry_of_series": "fieldviz.symmetry.wind_symmetry",
+    "write_report": "fieldviz.report.write",
     "write_snapshot": "fieldviz.snapshots.writer",
 }
 

@@ -168,6 +168,7 @@ def symmetry(
     """Say whether the wind is even, odd or one-sided, with the numbers.
 
     Example: fieldviz symmetry disc.h5 --r-range 1.2 4.5
+
     Example: fieldviz symmetry "run/disc_*.h5" --json
 
     Parameters
@@ -194,6 +195,120 @@ def symmetry(
 
 
 @app.command
+def sheets(
+    files: tuple[Path, ...],
+    *,
+    layout: Layout = None,
+    thickness: float | None = None,
+    r_range: tuple[float, float] | None = None,
+    as_json: Annotated[bool, Parameter("--json")] = False,
+) -> str:
+    """Find the flux sheets, and follow them through a series.
+
+    Example: fieldviz sheets disc.h5 --r-range 1.2 4.5
+
+    Example: fieldviz sheets "run/disc_*.h5" --json
+
+    Parameters
+    ----------
+    files
+        Snapshot, or several files, or a quoted pattern: a series.
+    layout
+        Layout description of a foreign file.
+    thickness
+        H/R of the disc; worked out from the snapshot by default.
+    r_range
+        Radii to search; all by default.
+    as_json
+        Print JSON for programs.
+    """
+    from fieldviz.commands.sheets import run
+
+    return run(files, layout=layout, thickness=thickness, r_range=r_range, as_json=as_json)
+
+
+@app.command
+def outflow(
+    files: tuple[Path, ...],
+    *,
+    layout: Layout = None,
+    surface: str = "4",
+    thickness: float | None = None,
+    r_range: tuple[float, float] | None = None,
+    as_json: Annotated[bool, Parameter("--json")] = False,
+) -> str:
+    """Measure what leaves each side: mass, angular momentum, energy, with budgets.
+
+    Example: fieldviz outflow disc.h5 --surface 5 --r-range 1.5 4
+
+    Example: fieldviz outflow disc.h5 --surface beta
+
+    Parameters
+    ----------
+    files
+        Snapshot, or several files, or a quoted pattern: a series.
+    layout
+        Layout description of a foreign file.
+    surface
+        Where gas is counted as leaving: a height in H; outflow (lowest height above which all gas
+        leaves); slow, sonic or beta (where that number is 1); or FIELD=VALUE.
+    thickness
+        H/R of the disc; worked out from the snapshot by default.
+    r_range
+        Radii between which to count; all by default.
+    as_json
+        Print JSON for programs.
+    """
+    from fieldviz.commands.outflow import run
+
+    return run(
+        files, layout=layout, surface=surface, thickness=thickness, r_range=r_range,
+        as_json=as_json,
+    )  # fmt: skip
+
+
+@app.command
+def report(
+    files: tuple[Path, ...],
+    *,
+    output: Annotated[Path, Parameter(name=["--output", "-o"])],
+    layout: Layout = None,
+    title: str | None = None,
+    scenes: Annotated[bool, Parameter(negative="--no-scenes")] = True,
+    keep: Path | None = None,
+    processes: bool = False,
+) -> str:
+    """Write all numbers of a snapshot or a series as one page, with tables and pictures.
+
+    Example: fieldviz report disc.h5 -o report
+
+    Example: fieldviz report "run/disc_*.h5" -o report --keep numbers --processes
+
+    Parameters
+    ----------
+    files
+        Snapshot, or several files, or a quoted pattern: a series.
+    output
+        Folder for report.html, its tables as CSV, and numbers.json.
+    layout
+        Layout description of a foreign file.
+    title
+        Title of the page.
+    scenes
+        Draw the scenes; without them the page has its diagrams only.
+    keep
+        Folder for the numbers of each snapshot: a second run takes up where the first stopped.
+    processes
+        Measure several snapshots at once.
+    """
+    from fieldviz.commands.report import run
+
+    return run(
+        files, output, layout=layout, title=title, scenes=scenes, kept=keep, processes=processes
+    )
+
+
+@app.command
 def lines(
     file: Path,
     *,
@@ -216,6 +331,7 @@ def lines(
     Streamlines also tell of the wind on each side: invariants, critical points, lever arms.
 
     Example: fieldviz lines disc.h5 --seeds equal-flux --count 200 -o lines.vtp
+
     Example: fieldviz lines disc.h5 --seeds wind --field poloidal-velocity -o wind.vtp
 
     Parameters

@@ -26,9 +26,14 @@ echo "== Field lines =="
     -o pictures/lines.vtp
 
 echo
-echo "== Verdict =="
-"$fieldviz" symmetry sample_wedge/saltmarsh_002.h5 | tee pictures/verdict.txt
+echo "== Report =="
+"$fieldviz" report "sample_wedge/saltmarsh_*.h5" -o pictures/report
 
 echo
-echo "Pictures, lines and the verdict lie in $(pwd)/pictures:"
+echo "== Verdict =="
+"$fieldviz" symmetry "sample_wedge/saltmarsh_*.h5" >pictures/verdict.txt
+head -n 1 pictures/verdict.txt
+
+echo
+echo "Pictures, lines, the report (report/report.html) and the verdict lie in $(pwd)/pictures:"
 ls pictures

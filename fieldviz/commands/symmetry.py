@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 import json
-import textwrap
 from collections.abc import Sequence
 from pathlib import Path
 
+from fieldviz.commands.given_files import opened, series_name
+from fieldviz.commands.plain_text import aligned, wrapped
 from fieldviz.commands.progress import tracked
-from fieldviz.snapshots.reader import read_snapshot
-from fieldviz.snapshots.series import SnapshotSeries, read_series
+from fieldviz.snapshots.series import SnapshotSeries
 from fieldviz.symmetry.displaced import DisplacedMidplane
 from fieldviz.symmetry.field_scores import FieldScores
 from fieldviz.symmetry.pairs import Pair
@@ -29,59 +29,47 @@ def run(
     as_json: bool,
 ) -> str:
     """Judge a snapshot, or a series of several files or a pattern; return the text for stdout."""
-    given = list(files)
+    series = opened(files, layout)
     how = {"scale_heights": scale_heights, "thickness": thickness, "r_range": r_range}
-    is_pattern = set("*?[") & set(str(given[0])) and not given[0].exists()
-    if len(given) == 1 and not is_pattern:
-        name, paths, dropped = given[0].name, given, 0
-        result = wind_symmetry(read_snapshot(given[0], layout=layout), **how)  # type: ignore[arg-type]
+    if len(series) == 1:
+        result = wind_symmetry(series[0], **how)  # type: ignore[arg-type]
     else:
-        series = read_series(str(given[0]) if len(given) == 1 else given, layout=layout)
-        name, paths, dropped = _series_name(series), list(series.paths), len(series.dropped)
         snapshots = tracked(series, "reading snapshots", len(series))
         result = wind_symmetry_of_series(snapshots, **how)  # type: ignore[arg-type]
     if as_json:
-        head: dict[str, object] = {"file": str(paths[0])}
-        if len(paths) > 1:
-            head = {"files": [str(path) for path in paths]}
+        head: dict[str, object] = {"file": str(series.paths[0])}
+        if len(series) > 1:
+            head = {"files": [str(path) for path in series.paths]}
         return json.dumps({**head, **result.to_dict()}, indent=2, allow_nan=False)
-    return _text(name, result, dropped)
+    return _text(series, result)
 
 
-def _series_name(series: SnapshotSeries) -> str:
-    first, last = series.paths[0].name, series.paths[-1].name
-    return first if len(series) == 1 else f"{first} to {last}"
-
-
-def _text(name: str, result: Symmetry, dropped: int) -> str:
-    when = f"t = {result.times[0]:.6g}"
-    if len(result.times) > 1:
-        when += f" to {result.times[-1]:.6g}, mean of {len(result.times)} snapshots"
+def _text(series: SnapshotSeries, result: Symmetry) -> str:
+    heading = series_name(series)
+    if len(series) > 1:
+        heading += f", mean of {len(result.times)} snapshots"
     rows: list[tuple[str, ...]] = [
         ("pair", "upper", "lower", "score", "angle (degrees)", "two-sigma interval", "word")
     ]
     shown = [*result.pairs, *([result.lean] if result.lean is not None else [])]
     rows += [_row(pair) for pair in shown]
-    lines = [result.sentence, "", f"{name}, {when}", *_aligned(rows), ""]
-    lines += ["by radius", *_aligned(_band_rows(result)), ""]
+    lines = [result.sentence, "", heading, *aligned(rows), ""]
+    lines += ["by radius", *aligned(_band_rows(result)), ""]
     if result.field_scores is not None:
-        lines += ["fields, scores of azimuth mean", *_aligned(_score_rows(result.field_scores)), ""]
+        lines += ["fields, scores of azimuth mean", *aligned(_score_rows(result.field_scores)), ""]
     if result.displaced is not None and result.displaced.scores:
-        lines += ["about the magnetic midplane", *_aligned(_displaced_rows(result.displaced)), ""]
-    lines += ["naming", _wrapped(result.naming), ""]
+        lines += ["about the magnetic midplane", *aligned(_displaced_rows(result.displaced)), ""]
+    lines += ["naming", wrapped(result.naming), ""]
     remarks = [f"{pair.name}: {pair.unit}" for pair in shown]
     remarks += [f"{pair.name}: {_source(pair)}" for pair in shown]
     remarks += [f"{pair.name}: {note}" for pair in shown for note in pair.notes]
     remarks += result.notes
     remarks += result.field_scores.notes if result.field_scores is not None else ()
-    if dropped:
-        remarks.append(f"{dropped} files of a time that was there already were dropped")
-    lines += ["what the numbers rest on", *map(_wrapped, remarks)]
+    if series.dropped:
+        count = len(series.dropped)
+        remarks.append(f"{count} files of a time that was there already were dropped")
+    lines += ["what the numbers rest on", *map(wrapped, remarks)]
     return "\n".join(lines)
-
-
-def _wrapped(remark: str) -> str:
-    return textwrap.fill(remark, 96, initial_indent="  - ", subsequent_indent="    ")
 
 
 def _source(pair: Pair) -> str:
@@ -148,10 +136,3 @@ def _displaced_rows(displaced: DisplacedMidplane) -> list[tuple[str, ...]]:
         for s in displaced.scores
     ]
     return rows
-
-
-def _aligned(rows: list[tuple[str, ...]]) -> list[str]:
-    widths = [max(len(row[n]) for row in rows) for n in range(len(rows[0]))]
-    return [
-        "  " + "  ".join(c.ljust(w) for c, w in zip(r, widths, strict=True)).rstrip() for r in rows
-    ]

@@ -95,7 +95,7 @@ class LeverArms:
             f"angular momentum), {both.lambda_eff_at_foot:.3g} (torque over mass loss), for which "
             f"a disc braked only by its wind has an ejection index of {both.index_of_lambda_A:.3g}"
             f", {both.index_of_lambda_l:.3g} and {both.index_of_lambda_eff:.3g}; measured "
-            f"{self.index:.3g} +- {self.index_error:.2g}"
+            f"{self.index:.3g} ± {self.index_error:.2g}"
         )
 
 

@@ -68,9 +68,9 @@ class Accretion:
             shares.append(np.nanmean(part) / total if size and abs(total) > 0 else np.nan)
         return (
             f"accretion {self.rate[0]:.4g} at r = {self.r[0]:.4g} and {self.rate[-1]:.4g} at r = "
-            f"{self.r[-1]:.4g}, of its mean over r {100 * shares[0]:.3g} % within "
-            f"{self.midplane_height:g} H of the midplane, {100 * shares[1]:.3g} % above and "
-            f"{100 * shares[2]:.3g} % below that"
+            f"{self.r[-1]:.4g}, of its mean over r {100 * shares[0]:.1f} % within "
+            f"{self.midplane_height:g} H of the midplane, {100 * shares[1]:.1f} % above and "
+            f"{100 * shares[2]:.1f} % below that"
         )
 
 
@@ -148,7 +148,7 @@ class EjectionIndex:
         if self.reason:
             return f"ejection index undefined: {self.reason}"
         return (
-            f"ejection index {self.value:.3g} +- {self.error:.2g} for r = {self.r_range[0]:.4g} to "
+            f"ejection index {self.value:.3g} ± {self.error:.2g} for r = {self.r_range[0]:.4g} to "
             f"{self.r_range[1]:.4g} (least squares), {self.total:.3g} from the wind of both sides "
             f"(upper alone {self.upper:.3g}, lower alone {self.lower:.3g})"
         )

@@ -20,7 +20,9 @@ def disc_file(tmp_path_factory):
     return path
 
 
-COMMANDS = ["sample", "inspect", "render", "symmetry", "lines", "export"]
+COMMANDS = [
+    "sample", "inspect", "render", "symmetry", "sheets", "outflow", "report", "lines", "export"
+]  # fmt: skip
 
 
 @pytest.mark.parametrize("command", COMMANDS)

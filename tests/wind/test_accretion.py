@@ -133,7 +133,7 @@ def test_split_by_height_adds_up_and_knows_where_gas_falls():
         np.testing.assert_allclose(total, found.rate, rtol=1e-12)
         np.testing.assert_allclose(found.midplane / found.rate, midplane, atol=1e-10)
         np.testing.assert_allclose(found.upper_layer, found.lower_layer, atol=1e-12)
-    assert "100 % within 1 H" in found.sentence
+    assert "100.0 % within 1 H" in found.sentence
 
 
 def test_a_fit_over_its_own_range():
