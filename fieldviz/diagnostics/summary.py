@@ -207,7 +207,8 @@ def _symmetry(found: Any) -> Iterator[Row]:
             yield f"{pair.name}, {side}", getattr(pair, side), pair.unit
         yield f"{pair.name}: score", pair.score, ""
         yield f"{pair.name}: angle", pair.angle, "degrees"
-        yield f"{pair.name}: error of the angle", pair.angle_error, "degrees"
+        error = Absent(pair.error_source) if pair.angle_error is None else pair.angle_error
+        yield f"{pair.name}: error of the angle", error, "degrees"
         yield f"{pair.name}: word", pair.word, ""
     if found.lean is not None:
         yield "lean of the field, upper", found.lean.upper, found.lean.unit
