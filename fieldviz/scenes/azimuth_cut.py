@@ -22,10 +22,14 @@ from fieldviz.scenes.ingredients import (
     add_density,
     add_vertical_field,
     density_bar,
+    density_material,
+    disc_body,
     field_label,
+    wall_outline,
 )
+from fieldviz.scenes.phrases import left_out
 from fieldviz.scenes.stage import Layer, Material
-from fieldviz.scenes.surfaces import contour, face, merged
+from fieldviz.scenes.surfaces import face, merged
 from fieldviz.scenes.theme import Theme
 from fieldviz.scenes.wording import degrees_text, even_ticks, number_text, radius_ticks
 from fieldviz.wedge.coordinates import points_to_cartesian
@@ -141,20 +145,8 @@ def _layers(cut: _Cut, lines: list[Array], theme: Theme) -> list[Layer]:
         mesh = tubes(in_plane(lines, float(cut.grid.phi[-1])), _LINE_WIDTH * end)
         bright = Material(theme.rgb("line"), ambient=0.35, specular=0.3)
         layers.append(Layer("field lines", mesh, bright))
-    layers.append(_outline(cut, theme))
+    layers.append(wall_outline(cut.grid, theme, (-1,)))
     return layers
-
-
-def _density_material(density: DensityScale, theme: Theme, *, lit: bool) -> Material:
-    return Material(
-        scalars="log_density",
-        colour_map=theme.colour_map("density"),
-        limits=density.limits,
-        lit=lit,
-        ambient=0.28,
-        diffuse=0.82,
-        specular=0.15,
-    )
 
 
 def _wall(cut: _Cut, theme: Theme) -> Layer:
@@ -162,21 +154,7 @@ def _wall(cut: _Cut, theme: Theme) -> Layer:
         plain = theme.colour("density", 0.1)
         return Layer("wall", face(cut.grid, "phi", -1), Material(plain, lit=False))
     surface = face(cut.grid, "phi", -1, ("log_density",))
-    return Layer("wall", surface, _density_material(cut.density, theme, lit=False))
-
-
-def _outline(cut: _Cut, theme: Theme) -> Layer:
-    """A thin line round the wall, whose thinnest gas has the colour of the page."""
-    grid = cut.grid
-    low, high = grid.theta[0], grid.theta[-1]
-    ring = [
-        np.column_stack([grid.r, np.full_like(grid.r, low)]),
-        np.column_stack([np.full_like(grid.theta, grid.r[-1]), grid.theta]),
-        np.column_stack([grid.r, np.full_like(grid.r, high)])[::-1],
-        np.column_stack([np.full_like(grid.theta, grid.r[0]), grid.theta])[::-1],
-    ]
-    mesh = tubes(in_plane(ring, float(grid.phi[-1])), 0.0016 * float(grid.r[-1]), widening=False)
-    return Layer("wall outline", mesh, Material(theme.rgb("outline"), lit=False))
+    return Layer("wall", surface, density_material(theme, cut.density, lit=False))
 
 
 def _floor(cut: _Cut, theme: Theme) -> Layer:
@@ -184,7 +162,7 @@ def _floor(cut: _Cut, theme: Theme) -> Layer:
     if cut.field is None:
         assert cut.density is not None
         surface = face(opened, "theta", cut.row, ("log_density",))
-        return Layer("midplane", surface, _density_material(cut.density, theme, lit=False))
+        return Layer("midplane", surface, density_material(theme, cut.density, lit=False))
     material = Material(
         scalars="sheet_field",
         colour_map=theme.colour_map("vertical_field"),
@@ -202,13 +180,11 @@ def _body(cut: _Cut, density: DensityScale, theme: Theme) -> list[Layer]:
     for half in (cut.upper, cut.lower):
         if min(half.shape) < 2:
             continue
-        skin.append(contour(half, *within, ("log_density",)))
+        skin.append(disc_body(half, density))
         sections.append(face(half, "phi", 0, ("log_density",), within))
-        for end in (0, -1):
-            skin.append(face(half, "r", end, ("log_density",), within))
     return [
-        Layer("disc body", merged(skin), _density_material(density, theme, lit=True)),
-        Layer("disc sections", merged(sections), _density_material(density, theme, lit=False)),
+        Layer("disc body", merged(skin), density_material(theme, density, lit=True)),
+        Layer("disc sections", merged(sections), density_material(theme, density, lit=False)),
     ]
 
 
@@ -261,9 +237,7 @@ def _caption(snapshot: Snapshot, scene: AzimuthCut, cut: _Cut, lines: list[Array
         phrases.append("no magnetic field in this snapshot: neither lines nor $B_z$")
     if cut.density is None:
         phrases.append("no density in this snapshot: neither the disc nor the wall's colours")
-    if grid.cells_left_out:
-        phrases.append(f"{grid.cells_left_out} cells without a number left out")
-    return phrases
+    return phrases + left_out(grid)
 
 
 def _drawn(cut: _Cut, wall: float) -> dict[str, Any]:

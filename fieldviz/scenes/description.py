@@ -6,19 +6,30 @@ A setting that is None is taken from the data.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, fields
+from dataclasses import fields
 from difflib import get_close_matches
 from math import isfinite
-from typing import Any, ClassVar
+from typing import Any, get_args
 
 import tomlkit
 from tomlkit.exceptions import TOMLKitError
 
 from fieldviz.errors import RenderError
+from fieldviz.scenes.settings import (
+    AzimuthCut,
+    CurrentSheetView,
+    FluxSheets,
+    MirrorCheck,
+    OutflowView,
+    Scene,
+)
 
 __all__ = [
     "AzimuthCut",
+    "CurrentSheetView",
     "FluxSheets",
+    "MirrorCheck",
+    "OutflowView",
     "Scene",
     "scene_from_toml",
     "scene_named",
@@ -30,137 +41,7 @@ __all__ = [
 RECIPE_TABLES = ("fieldviz", "picture", "snapshot", "drawn")
 
 
-@dataclass(frozen=True)
-class AzimuthCut:
-    """The wedge opened at constant azimuth.
-
-    Attributes
-    ----------
-    cut_azimuth : float or None
-        Azimuth of the wall, degrees. None: the end of the wedge.
-    sector : float
-        Azimuth from the near edge to the wall, degrees.
-    opened_share : float
-        Share of the sector whose upper half is taken away, 0.1 to 0.9.
-    outer_radius : float or None
-        Radius at which the picture ends, code length. None: the whole wedge.
-    line_count : int
-        Poloidal field lines, equal flux between neighbours.
-    surface_level : float
-        Density of the disc's body over that of the midplane at the same radius.
-    density_exponent, field_exponent : float or None
-        a and b in rho R^a and B_z R^b. None: fitted to the midplane, to the nearest quarter.
-    field_limit : float or None
-        Upper end of the colours of B_z R^b, code units. None: a high percentile.
-    density_limits : (float, float) or None
-        Ends of the colours of log10 density, code units. None: percentiles.
-    camera_azimuth, camera_height : float
-        Direction of the camera from the near edge of the sector and above the midplane, degrees.
-    """
-
-    scene: ClassVar[str] = "azimuth-cut"
-
-    cut_azimuth: float | None = None
-    sector: float = 45.0
-    opened_share: float = 0.42
-    outer_radius: float | None = None
-    line_count: int = 26
-    surface_level: float = 0.1
-    density_exponent: float | None = None
-    field_exponent: float | None = None
-    field_limit: float | None = None
-    density_limits: tuple[float, float] | None = None
-    camera_azimuth: float = -60.0
-    camera_height: float = 19.0
-
-    def __post_init__(self) -> None:
-        _check_range(self, "sector", 5.0, 180.0)
-        _check_range(self, "opened_share", 0.1, 0.9)
-        _check_range(self, "line_count", 1, 400)
-        _check_range(self, "surface_level", 1e-8, 0.99)
-        _check_range(self, "camera_height", -89.0, 89.0)
-        _check_limits(self, "density_limits")
-
-
-@dataclass(frozen=True)
-class FluxSheets:
-    """Nested surfaces of constant B_z R^b in a ring whose front is taken away.
-
-    Attributes
-    ----------
-    shown_azimuth : float
-        Azimuth of the ring that is shown, degrees; the rest is taken away in front.
-    outer_level, inner_level : float or None
-        B_z R^b of the translucent and of the opaque surface, code units. None: from the median
-        and the peaks on the midplane.
-    height_limit : float
-        The translucent surfaces end at abs(z)/R of this value.
-    inner_height_limit : float
-        The opaque surfaces end at abs(z)/R of this value, so that both are seen from above.
-    line_count : int
-        Field lines along the sheets over the shown azimuth, about; 0 for none.
-    line_height_limit : float
-        Field lines end at abs(z)/R of this value.
-    surface_level : float
-        Density of the disc's surface over that of the midplane at the same radius.
-    outer_radius : float or None
-        Radius at which the picture ends, code length. None: the whole wedge.
-    density_exponent, field_exponent : float or None
-        a and b in rho R^a and B_z R^b. None: fitted to the midplane, to the nearest quarter.
-    density_limits : (float, float) or None
-        Ends of the colours of log10 density, code units. None: percentiles.
-    camera_azimuth, camera_height : float
-        Direction of the camera from the middle of the opening and above the midplane, degrees.
-    """
-
-    scene: ClassVar[str] = "flux-sheets"
-
-    shown_azimuth: float = 270.0
-    outer_level: float | None = None
-    inner_level: float | None = None
-    height_limit: float = 0.5
-    inner_height_limit: float = 0.3
-    line_count: int = 72
-    line_height_limit: float = 0.8
-    surface_level: float = 0.1
-    outer_radius: float | None = None
-    density_exponent: float | None = None
-    field_exponent: float | None = None
-    density_limits: tuple[float, float] | None = None
-    camera_azimuth: float = 6.0
-    camera_height: float = 28.0
-
-    def __post_init__(self) -> None:
-        _check_range(self, "shown_azimuth", 20.0, 360.0)
-        _check_range(self, "height_limit", 0.02, 10.0)
-        _check_range(self, "inner_height_limit", 0.02, 10.0)
-        _check_range(self, "line_count", 0, 2000)
-        _check_range(self, "line_height_limit", 0.02, 10.0)
-        _check_range(self, "surface_level", 1e-8, 0.99)
-        _check_range(self, "camera_height", -89.0, 89.0)
-        _check_limits(self, "density_limits")
-
-
-Scene = AzimuthCut | FluxSheets
-_SCENES: dict[str, type[AzimuthCut] | type[FluxSheets]] = {
-    kind.scene: kind for kind in (AzimuthCut, FluxSheets)
-}
-
-
-def _check_range(scene: object, name: str, low: float, high: float) -> None:
-    value = getattr(scene, name)
-    if not low <= value <= high:
-        raise RenderError(
-            f"Cannot use this scene: expected {name} between {low:g} and {high:g}, got {value}."
-        )
-
-
-def _check_limits(scene: object, name: str) -> None:
-    limits = getattr(scene, name)
-    if limits is not None and not limits[0] < limits[1]:
-        raise RenderError(
-            f"Cannot use this scene: expected {name} as two increasing numbers, got {limits}."
-        )
+_SCENES: dict[str, type[Scene]] = {kind.scene: kind for kind in get_args(Scene)}
 
 
 def scene_names() -> tuple[str, ...]:
@@ -209,7 +90,7 @@ def scene_from_toml(text: str) -> Scene:
 
     Returns
     -------
-    AzimuthCut or FluxSheets
+    Scene
 
     Raises
     ------
@@ -250,12 +131,16 @@ def _with_settings(default: Scene, settings: object) -> Scene:
     return type(default)(**values)
 
 
-def _value(key: str, kind: str, given: Any) -> float | int | tuple[float, ...]:
+def _value(key: str, kind: str, given: Any) -> float | int | bool | tuple[float, ...]:
     """A TOML value as the setting's type; `kind` is the annotation of the setting."""
     if kind.startswith("tuple"):
         if isinstance(given, list) and len(given) == 2 and all(map(_is_number, given)):
             return tuple(float(n) for n in given)
         wanted = "two numbers"
+    elif kind == "bool":
+        if isinstance(given, bool):
+            return given
+        wanted = "true or false"
     elif kind == "int":
         if _is_number(given) and given == int(given):
             return int(given)

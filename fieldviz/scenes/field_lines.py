@@ -20,6 +20,7 @@ from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
 
 __all__ = [
+    "arrow_heads",
     "coarsest_cell",
     "equal_flux_levels",
     "in_plane",
@@ -32,6 +33,7 @@ _REFINEMENT = 4
 _DIRECTION_WIDTH = (0.8, 3.0)  # cells along theta and r over which directions are averaged
 _SMOOTHING = 1.2  # of the largest cells: lines are smoothed over this length
 _MOST_LINES = 2000  # of edges in either direction
+_HEAD = (7.5, 2.6)  # length and radius of an arrow head, in radii of its tube
 _STEEPEST = 6.0  # d ln r/d theta beyond which field lines count as radial
 
 
@@ -206,9 +208,34 @@ def tubes(
         ]
     )
     threads = pv.PolyData(points_to_cartesian(points), lines=cells)
-    share = 0.35 + 0.65 * points[:, 0] / end if widening else np.ones(len(points))
+    share = _widening(points[:, 0], end) if widening else np.ones(len(points))
     threads.point_data["width"] = width * share
     if scalars is not None:
         name, values = scalars
         threads.point_data[name] = np.concatenate([values[n] for n in kept])
     return threads.tube(scalars="width", absolute=True, n_sides=12)
+
+
+def _widening(r: Array, end: float) -> Array:
+    """Width of a tube at radius r over that at the outermost point."""
+    return np.asarray(0.35 + 0.65 * r / end)
+
+
+def arrow_heads(lines: list[Array], width: float, *, scalars: tuple[str, list[Array]]) -> Any:
+    """A cone at the end of each line, pointing along it; parameters as of `tubes`."""
+    kept = [n for n, line in enumerate(lines) if len(line) > 3]
+    if not kept:
+        return empty_surface()
+    tips = points_to_cartesian(np.stack([lines[n][-1] for n in kept]))
+    before = points_to_cartesian(np.stack([lines[n][-3] for n in kept]))
+    along = tips - before
+    end = max(float(lines[n][:, 0].max()) for n in kept)
+    cloud = pv.PolyData(tips)
+    cloud.point_data["along"] = along / np.linalg.norm(along, axis=1, keepdims=True)
+    cloud.point_data["size"] = width * _widening(np.array([lines[n][-1, 0] for n in kept]), end)
+    name, values = scalars
+    cloud.point_data[name] = np.array([values[n][-1] for n in kept])
+    length, base = _HEAD
+    head = pv.Cone(center=(0.0, 0, 0), direction=(1, 0, 0), height=length, radius=base)
+    head = head.compute_normals(cell_normals=False, split_vertices=True)
+    return cloud.glyph(orient="along", scale="size", factor=1.0, geom=head)

@@ -10,19 +10,26 @@ from fieldviz.scenes.composition import ColourBar, Composition, Swatches
 from fieldviz.scenes.description import FluxSheets
 from fieldviz.scenes.display_grid import DisplayGrid, Window, make_display_grid
 from fieldviz.scenes.field_lines import tubes
-from fieldviz.scenes.from_data import FieldScale, round_figure, sheet_levels
+from fieldviz.scenes.from_data import FieldScale, sheet_levels
 from fieldviz.scenes.ingredients import (
     DensityScale,
     add_density,
     add_vertical_field,
     density_bar,
+    density_material,
+    disc_sections,
     field_label,
+    is_closed,
+    pitch_bar,
+    pitch_material,
 )
+from fieldviz.scenes.phrases import absent_layers, left_out, repeats, surface_phrase, taken_away
 from fieldviz.scenes.sheet_lines import SheetLines, sheet_lines
+from fieldviz.scenes.shown_lines import SMOOTHING
 from fieldviz.scenes.stage import Layer, Material
 from fieldviz.scenes.surfaces import contour, face, merged
 from fieldviz.scenes.theme import Theme
-from fieldviz.scenes.wording import degrees_text, number_text
+from fieldviz.scenes.wording import number_text
 from fieldviz.wedge.grid import WedgeGrid
 from fieldviz.wedge.snapshot import Snapshot
 
@@ -126,18 +133,16 @@ def _layers(
     theme: Theme,
 ) -> list[Layer]:
     outer, inner = levels
-    closed = _is_closed(grid)
-    section = Material(
-        scalars="log_density",
-        colour_map=theme.colour_map("density"),
-        limits=density.limits,
-        lit=False,
-    )
+    closed = is_closed(grid)
     outer_mesh = contour(grid.coarser(3, 1), "sheet_field", outer)
     inner_mesh = _inner_sheets(_lower_than(grid, inner_height), inner, density, closed)
     return [
         Layer("disc surface", _disc_surface(grid, density, theme), _DISC_MATERIAL),
-        Layer("cut faces", _cut_faces(grid, density, closed), section),
+        Layer(
+            "cut faces",
+            disc_sections(grid, density),
+            density_material(theme, density, lit=False),
+        ),
         Layer("outer sheets", outer_mesh, _sheet(theme, theme.outer_share, theme.outer_opacity)),
         Layer("inner sheets", inner_mesh, _sheet(theme, theme.inner_share, 1.0)),
     ]
@@ -145,20 +150,13 @@ def _layers(
 
 def _line_layer(grid: DisplayGrid, threads: SheetLines, theme: Theme) -> Layer:
     mesh = tubes(threads.places, _LINE_WIDTH * float(grid.r[-1]), scalars=("pitch", threads.pitch))
-    material = Material(
-        scalars="pitch",
-        colour_map=theme.colour_map("signed_field_on_lines"),
-        limits=(-1.0, 1.0),
-        ambient=0.22,
-        specular=0.45,
-        specular_power=30.0,
-    )
-    return Layer("field lines", mesh, material)
+    return Layer("field lines", mesh, pitch_material(theme))
 
 
 def _line_phrases(scene: FluxSheets, threads: SheetLines) -> list[str]:
     if threads.places:
-        return [f"{len(threads.places)} lines from the sheets' ridges, smoothed over 2.5 cells"]
+        count = len(threads.places)
+        return [f"{count} lines from the sheets' ridges, smoothed over {SMOOTHING:g} cells"]
     return ["no field lines: no sheet or no azimuthal field"] if scene.line_count else []
 
 
@@ -175,10 +173,6 @@ def _sheet(theme: Theme, share: float, opacity: float) -> Material:
 _DISC_MATERIAL = Material(scalars="colour", rgba=True, specular=0.35, specular_power=10.0)
 
 
-def _is_closed(grid: DisplayGrid) -> bool:
-    return bool(grid.phi[-1] - grid.phi[0] > 2 * np.pi - 1e-6)
-
-
 def _disc_surface(grid: DisplayGrid, density: DensityScale, theme: Theme) -> Any:
     """The disc's surface with colours that fade towards its outer end."""
     surface = contour(grid.coarser(2, 2, 2), "log_surface_density", density.surface)
@@ -191,13 +185,6 @@ def _disc_surface(grid: DisplayGrid, density: DensityScale, theme: Theme) -> Any
         colours[:, 3] = theme.haze_opacity * fade
         surface.point_data["colour"] = np.rint(255 * colours).astype(np.uint8)
     return surface
-
-
-def _cut_faces(grid: DisplayGrid, density: DensityScale, closed: bool) -> Any:
-    if closed:
-        return merged([])
-    within = ("log_surface_density", density.surface)
-    return merged([face(grid, "phi", end, ("log_density",), within) for end in (0, -1)])
 
 
 def _lower_than(grid: DisplayGrid, height: float) -> DisplayGrid:
@@ -231,15 +218,9 @@ def _legends(
 ) -> list[ColourBar | Swatches]:
     factor, label = field_label(field, levels[1])
     texts = [number_text(level / factor) for level in levels]
-    pitch = ColourBar(
-        r"field line: $B_\phi/|B|$",
-        theme.colour_map("signed_field_on_lines"),
-        (-1.0, 1.0),
-        [(value, number_text(value)) for value in (-1.0, -0.5, 0.0, 0.5, 1.0)],
-    )
     return [
         density_bar(theme, density, r"cut face: $\rho$ [code units]"),
-        *([pitch] if with_lines else []),
+        *([pitch_bar(theme)] if with_lines else []),
         Swatches(
             f"surfaces of {label}",
             [("outer sheets", None, texts[0]), ("inner sheets", "outer sheets", texts[1])],
@@ -255,30 +236,13 @@ def _caption(
     layers: list[Layer],
     span: float,
 ) -> list[str]:
-    phrases = [_repeat_phrase(wedge, span)]
-    if not _is_closed(grid):
-        phrases.append(f"front {degrees_text(2 * np.pi - span)} taken away")
+    phrases = [repeats(wedge, span), *taken_away(span)]
     heights = rf"$|z| < {scene.height_limit:g}\,R$"
     if scene.inner_height_limit < scene.height_limit:
         heights += rf", the inner ones for $|z| < {scene.inner_height_limit:g}\,R$"
     phrases.append(f"sheets shown for {heights}")
-    phrases.append(
-        f"disc surface: {number_text(round_figure(scene.surface_level))} of the midplane density"
-    )
+    phrases.append(surface_phrase(scene.surface_level))
     if field.sign < 0:
         phrases.append(r"the net field points down: $-B_z$ is shown")
-    phrases += [f"no {layer.name} in these data" for layer in layers if not layer.mesh.n_points
-                and not (layer.name == "cut faces" and _is_closed(grid))]  # fmt: skip
-    if grid.cells_left_out:
-        phrases.append(f"{grid.cells_left_out} cells without a number left out")
-    return phrases
-
-
-def _repeat_phrase(wedge: WedgeGrid, span: float) -> str:
-    if wedge.is_full_ring:
-        return f"{degrees_text(span)} of the full ring"
-    times = span / wedge.period
-    if times <= 1 + 1e-6:
-        return f"{degrees_text(span)} of a wedge of {degrees_text(wedge.period)}"
-    count = f"{times:.1f}".removesuffix(".0")
-    return f"wedge of {degrees_text(wedge.period)} repeated {count}\N{MULTIPLICATION SIGN}"
+    expected = ("cut faces",) if is_closed(grid) else ()
+    return phrases + absent_layers(layers, *expected) + left_out(grid)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 
 import numpy as np
@@ -12,10 +13,23 @@ from fieldviz.scenes.page import Page
 from fieldviz.scenes.swatches import lit_swatch
 from fieldviz.wedge.typing import Array
 
-__all__ = ["data_mask", "put_footer", "put_header", "put_radius_marks", "put_scale_bar"]
+__all__ = [
+    "BAR_WIDTH",
+    "MARGIN",
+    "caption_top",
+    "data_mask",
+    "put_bar",
+    "put_caption",
+    "put_footer",
+    "put_header",
+    "put_radius_marks",
+    "put_scale_bar",
+    "rows_of",
+]
 
-_MARGIN = 64.0
-_BAR = (360.0, 14.0)
+MARGIN = 64.0
+BAR_WIDTH = 360.0
+_BAR = (BAR_WIDTH, 14.0)
 _SWATCH = (58.0, 26.0)
 _GAP = 88.0
 _LABEL, _TICK, _CAPTION = 24.0, 22.0, 20.0
@@ -27,31 +41,27 @@ _LABEL, _TICK, _CAPTION = 24.0, 22.0, 20.0
 def put_header(page: Page, title: str, subtitle: str, time: str) -> None:
     """Title and subtitle at the upper left, the time at the upper right."""
     s = page.scale
-    right = page.size[0] - _MARGIN * s
-    end = page.text(_MARGIN * s, 62 * s, title, 40, bold=True).right
+    right = page.size[0] - MARGIN * s
+    end = page.text(MARGIN * s, 62 * s, title, 40, bold=True).right
     beside = end + 40 * s + page.extent(time, 30)[0] <= right
     if beside:
         page.text(right, 62 * s, time, 30, align="right")
     y = 114 * s
-    for row in _rows(page, subtitle.split(" "), " ", 25, page.size[0] - 2 * _MARGIN * s):
-        page.text(_MARGIN * s, y, row, 25, faint=True)
+    for row in rows_of(page, _words(subtitle), " ", 25, page.size[0] - 2 * MARGIN * s):
+        page.text(MARGIN * s, y, row, 25, faint=True)
         y += 34 * s
     if not beside:
-        page.text(_MARGIN * s, y + 14 * s, time, 30)
+        page.text(MARGIN * s, y + 14 * s, time, 30)
 
 
 def put_footer(page: Page, composition: Composition) -> float:
     """Caption and legends at the lower left; returns the top of the footer in pixels."""
     s = page.scale
-    room = page.size[0] - 2 * _MARGIN * s
-    rows = _rows(page, composition.caption, "  ·  ", _CAPTION, room)
-    y = page.size[1] - 40 * s - 30 * s * (len(rows) - 1)
-    top = y
-    for number, row in enumerate(rows):
-        page.text(_MARGIN * s, y + 30 * s * number, row, _CAPTION, faint=True)
+    room = page.size[0] - 2 * MARGIN * s
+    top = put_caption(page, composition.caption)
     for legends in reversed(_legend_rows(page, composition.legends, room)):
         top -= 88 * s
-        x = _MARGIN * s
+        x = MARGIN * s
         for legend in legends:
             _put_legend(page, legend, x, top, composition)
             x += (_legend_width(page, legend) + _GAP) * s
@@ -59,16 +69,43 @@ def put_footer(page: Page, composition: Composition) -> float:
     return top
 
 
-def _rows(page: Page, phrases: Sequence[str], joint: str, size: float, room: float) -> list[str]:
-    """Join phrases into rows no wider than `room` pixels."""
+def put_caption(page: Page, phrases: Sequence[str]) -> float:
+    """Caption at the lower left; returns the middle of its first row in pixels."""
+    s = page.scale
+    top = caption_top(page, phrases)
+    for number, row in enumerate(_caption_rows(page, phrases)):
+        page.text(MARGIN * s, top + 30 * s * number, row, _CAPTION, faint=True)
+    return top
+
+
+def caption_top(page: Page, phrases: Sequence[str]) -> float:
+    """Middle of the first row that a caption would have, pixels."""
+    rows = _caption_rows(page, phrases)
+    return page.size[1] - 40 * page.scale - 30 * page.scale * (len(rows) - 1)
+
+
+def _caption_rows(page: Page, phrases: Sequence[str]) -> list[str]:
+    room = page.size[0] - 2 * MARGIN * page.scale
+    return rows_of(page, phrases, "  ·  ", _CAPTION, room)
+
+
+def rows_of(page: Page, phrases: Sequence[str], joint: str, size: float, room: float) -> list[str]:
+    """Join phrases into rows no wider than `room` pixels; a longer phrase is broken."""
     rows: list[str] = []
     for phrase in phrases:
         longer = f"{rows[-1]}{joint}{phrase}" if rows else phrase
         if rows and page.extent(longer, size)[0] <= room:
             rows[-1] = longer
+        elif page.extent(phrase, size)[0] > room and joint != " ":
+            rows += rows_of(page, _words(phrase), " ", size, room)
         else:
             rows.append(phrase)
     return rows
+
+
+def _words(phrase: str) -> list[str]:
+    """Split at spaces, but not within mathematical notation."""
+    return re.split(r" (?=(?:[^$]*\$[^$]*\$)*[^$]*$)", phrase)
 
 
 # ---- legends ----------------------------------------------------------------------------------
@@ -105,15 +142,17 @@ def _legend_rows(
 def _put_legend(
     page: Page, legend: ColourBar | Swatches, x: float, y: float, composition: Composition
 ) -> None:
-    page.text(x, y - 27 * page.scale, legend.label, _LABEL)
     if isinstance(legend, ColourBar):
-        _put_bar(page, legend, x, y)
+        put_bar(page, legend, x, y)
     else:
+        page.text(x, y - 27 * page.scale, legend.label, _LABEL)
         _put_swatches(page, legend, x, y, composition)
 
 
-def _put_bar(page: Page, bar: ColourBar, x: float, y: float) -> None:
+def put_bar(page: Page, bar: ColourBar, x: float, y: float) -> None:
+    """A colour bar, its upper left corner at x, y, with its label above and ticks below."""
     s = page.scale
+    page.text(x, y - 27 * s, bar.label, _LABEL)
     width, height = round(_BAR[0] * s), max(round(_BAR[1] * s), 4)
     shares = (np.arange(width) + 0.5) / width
     row = np.rint(255 * np.asarray(bar.colour_map(shares))[:, :3]).astype(np.uint8)
@@ -152,20 +191,31 @@ def _put_swatches(
 
 
 def put_scale_bar(page: Page, camera: Camera, middle: Array, y: float) -> None:
-    """A bar of round length at the lower right; its length holds at the distance of `middle`."""
+    """A bar of round length at the lower right; its length holds at the distance of `middle`.
+
+    It goes up from `y` until it is clear of captions and legends.
+    """
     s = page.scale
     per_length = camera.pixels_per_length(middle, page.size)
     longest = 300 * s / per_length
     power = 10.0 ** np.floor(np.log10(longest))
     length = max(m * power for m in (1, 2, 5) if m * power <= longest)
-    right = page.size[0] - _MARGIN * s
+    right = page.size[0] - MARGIN * s
     left = right - length * per_length
+    words = rf"${length:g}\,R_0$ at the star"
+    width, height = page.extent(words, _LABEL)
+    centre = min((left + right) / 2, right - width / 2)
+    for _ in range(40):
+        box = PixelBox(min(left, centre - width / 2), y - 30 * s - height, right, y + 12 * s)
+        if page.is_free(box):
+            break
+        y -= 10 * s
+    else:
+        return
     page.line([left, right], [y, y], 2.0)
     for x in (left, right):
         page.line([x, x], [y - 8 * s, y + 8 * s], 2.0)
-    words = rf"${length:g}\,R_0$ at the star"
-    half = page.extent(words, _LABEL)[0] / 2
-    page.text(min((left + right) / 2, right - half), y - 30 * s, words, _LABEL, align="center")
+    page.text(centre, y - 30 * s, words, _LABEL, align="center")
 
 
 def data_mask(image: np.ndarray, margin: int) -> np.ndarray:

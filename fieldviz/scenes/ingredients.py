@@ -1,13 +1,15 @@
-"""What both scenes need: the compensated fields on the display grid, and their colours."""
+"""What several scenes need: compensated fields on the display grid, materials, colour bars."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
 from fieldviz.scenes.composition import ColourBar
 from fieldviz.scenes.display_grid import DisplayGrid
+from fieldviz.scenes.field_lines import in_plane, tubes
 from fieldviz.scenes.from_data import (
     FieldScale,
     field_scale,
@@ -15,11 +17,26 @@ from fieldviz.scenes.from_data import (
     robust_range,
     vertical_field,
 )
+from fieldviz.scenes.stage import Layer, Material
+from fieldviz.scenes.surfaces import contour, face, merged
 from fieldviz.scenes.theme import Theme
-from fieldviz.scenes.wording import decade_ticks, power_text, scaled
+from fieldviz.scenes.wording import decade_ticks, number_text, power_text, scaled
 from fieldviz.wedge.typing import Array
 
-__all__ = ["DensityScale", "add_density", "add_vertical_field", "density_bar", "field_label"]
+__all__ = [
+    "DensityScale",
+    "add_density",
+    "add_vertical_field",
+    "density_bar",
+    "density_material",
+    "disc_body",
+    "disc_sections",
+    "field_label",
+    "is_closed",
+    "pitch_bar",
+    "pitch_material",
+    "wall_outline",
+]
 
 _DEEPEST = 4.6  # decades of density below its maximum that are told apart
 
@@ -105,3 +122,73 @@ def field_label(scale: FieldScale, largest: float) -> tuple[float, str]:
     factor, unit = scaled(largest)
     sign = "" if scale.sign > 0 else "-"
     return factor, rf"${sign}B_z{power_text('R', scale.exponent)}$ [{unit}]"
+
+
+def density_material(theme: Theme, scale: DensityScale, *, lit: bool) -> Material:
+    """Gas in the colours of its density; unlit where it must match the bar."""
+    return Material(
+        scalars="log_density",
+        colour_map=theme.colour_map("density"),
+        limits=scale.limits,
+        lit=lit,
+        ambient=0.28,
+        diffuse=0.82,
+        specular=0.15,
+    )
+
+
+def disc_body(grid: DisplayGrid, scale: DensityScale) -> Any:
+    """The disc's surface and its inner and outer ends, with "log_density"."""
+    within = ("log_surface_density", scale.surface)
+    parts = [contour(grid, *within, ("log_density",))]
+    parts += [face(grid, "r", end, ("log_density",), within) for end in (0, -1)]
+    return merged(parts)
+
+
+def disc_sections(grid: DisplayGrid, scale: DensityScale, ends: tuple[int, ...] = (0, -1)) -> Any:
+    """The disc where it is cut at constant azimuth; none for a closed ring."""
+    if is_closed(grid):
+        return merged([])
+    within = ("log_surface_density", scale.surface)
+    return merged([face(grid, "phi", end, ("log_density",), within) for end in ends])
+
+
+def is_closed(grid: DisplayGrid) -> bool:
+    """Whether the azimuth that is shown is the whole ring."""
+    return bool(grid.phi[-1] - grid.phi[0] > 2 * np.pi - 1e-6)
+
+
+def wall_outline(grid: DisplayGrid, theme: Theme, ends: tuple[int, ...]) -> Layer:
+    """A thin line round the walls at some azimuth nodes, as low values have the page's colour."""
+    low, high = grid.theta[0], grid.theta[-1]
+    ring = [
+        np.column_stack([grid.r, np.full_like(grid.r, low)]),
+        np.column_stack([np.full_like(grid.theta, grid.r[-1]), grid.theta]),
+        np.column_stack([grid.r, np.full_like(grid.r, high)])[::-1],
+        np.column_stack([np.full_like(grid.theta, grid.r[0]), grid.theta])[::-1],
+    ]
+    width = 0.0016 * float(grid.r[-1])
+    parts = [tubes(in_plane(ring, float(grid.phi[end])), width, widening=False) for end in ends]
+    return Layer("wall outline", merged(parts), Material(theme.rgb("outline"), lit=False))
+
+
+def pitch_material(theme: Theme) -> Material:
+    """Field lines in the colours of "pitch", B_phi/|B|."""
+    return Material(
+        scalars="pitch",
+        colour_map=theme.colour_map("signed_field_on_lines"),
+        limits=(-1.0, 1.0),
+        ambient=0.22,
+        specular=0.45,
+        specular_power=30.0,
+    )
+
+
+def pitch_bar(theme: Theme) -> ColourBar:
+    """Colour bar of the field lines."""
+    return ColourBar(
+        r"field line: $B_\phi/|B|$",
+        theme.colour_map("signed_field_on_lines"),
+        (-1.0, 1.0),
+        [(value, number_text(value)) for value in (-1.0, -0.5, 0.0, 0.5, 1.0)],
+    )

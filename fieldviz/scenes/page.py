@@ -16,7 +16,7 @@ from PIL import Image
 from fieldviz.scenes.camera import PixelBox
 from fieldviz.scenes.theme import Theme
 
-__all__ = ["Page", "PlacedText"]
+__all__ = ["Align", "Page", "PlacedText"]
 
 Align = Literal["left", "center", "right"]
 _DPI = 72.0  # one point is one pixel
@@ -164,10 +164,14 @@ class Page:
     # ---- what is free -------------------------------------------------------------------------
 
     def is_free(self, box: PixelBox, occupied: np.ndarray | None = None) -> bool:
-        """Whether a box is on the page, clear of all texts and of `occupied` pixels."""
+        """Whether a box is on the page, clear of texts, small pictures and `occupied` pixels."""
         if box.left < 0 or box.top < 0 or box.right > self.size[0] or box.bottom > self.size[1]:
             return False
-        if any(box.meets(placed.box) for placed in self.texts):
+        pictures = (
+            PixelBox(left, top, left + patch.shape[1], top + patch.shape[0])
+            for left, top, patch in self._pasted
+        )
+        if any(box.meets(other) for other in (*(t.box for t in self.texts), *pictures)):
             return False
         if occupied is None:
             return True
@@ -195,8 +199,11 @@ class Page:
         """The page laid over a picture of its size, (h, w, 3) uint8."""
         picture = image.copy()
         for left, top, patch in self._pasted:
-            height, width = patch.shape[:2]
-            picture[top : top + height, left : left + width] = patch
+            height, width = (
+                n - max(k, 0) for n, k in zip(picture.shape, (top, left), strict=False)
+            )
+            part = patch[: max(height, 0), : max(width, 0)]
+            picture[top : top + part.shape[0], left : left + part.shape[1]] = part
         self._canvas.draw()
         drawn = np.asarray(self._canvas.buffer_rgba())[: image.shape[0], : image.shape[1]]
         ink = Image.fromarray(np.ascontiguousarray(drawn))

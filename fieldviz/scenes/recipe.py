@@ -37,7 +37,7 @@ def make_recipe(
     Parameters
     ----------
     snapshot : Snapshot
-    scene : AzimuthCut or FluxSheets
+    scene : Scene
     drawn : mapping
         Settings as they were used, those taken from the data included.
     theme, size, quality

@@ -22,6 +22,7 @@ from fieldviz.scenes.furniture import (
 )
 from fieldviz.scenes.off_screen import prepare_off_screen
 from fieldviz.scenes.page import Page
+from fieldviz.scenes.panels import FlatComposition, paint_panels
 from fieldviz.scenes.recipe import make_recipe, picture_path, write
 from fieldviz.scenes.stage import Quality, photograph, quality_named
 from fieldviz.scenes.theme import Theme, theme_named
@@ -51,7 +52,8 @@ def render(
     ----------
     snapshot : Snapshot
     scene : str or scene description
-        "flux-sheets", "azimuth-cut", or a description with its settings.
+        "flux-sheets", "outflow", "azimuth-cut", "mirror-check", "current-sheet", or a description
+        with its settings.
     path : str or Path, optional
         PNG file; it carries its recipe in its metadata and appears only when it is whole.
     theme : str
@@ -118,20 +120,32 @@ def _checked_size(size: tuple[int, int]) -> tuple[int, int]:
     return width, height
 
 
-def compose(snapshot: Snapshot, scene: Scene, theme: Theme, nodes: int = 2_800_000) -> Composition:
+def compose(
+    snapshot: Snapshot, scene: Scene, theme: Theme, nodes: int = 2_800_000
+) -> Composition | FlatComposition:
     """Make a scene's layers, legends and caption from a snapshot, on at most so many nodes."""
     from fieldviz.scenes.azimuth_cut import compose_azimuth_cut
+    from fieldviz.scenes.current_view import compose_current_sheet
     from fieldviz.scenes.flux_sheets import compose_flux_sheets
+    from fieldviz.scenes.mirror_check import compose_mirror_check
+    from fieldviz.scenes.outflow_view import compose_outflow
 
-    makers: dict[str, Callable[..., Composition]] = {
+    makers: dict[str, Callable[..., Composition | FlatComposition]] = {
         "azimuth-cut": compose_azimuth_cut,
         "flux-sheets": compose_flux_sheets,
+        "outflow": compose_outflow,
+        "mirror-check": compose_mirror_check,
+        "current-sheet": compose_current_sheet,
     }
     return makers[scene.scene](snapshot, cast(Any, scene), theme, nodes)
 
 
 def paint(
-    composition: Composition, time: str, theme: Theme, size: tuple[int, int], quality: Quality
+    composition: Composition | FlatComposition,
+    time: str,
+    theme: Theme,
+    size: tuple[int, int],
+    quality: Quality,
 ) -> tuple[np.ndarray, Page]:
     """Photograph a composition and write its page.
 
@@ -141,6 +155,8 @@ def paint(
     Page
         With the extents of all its texts.
     """
+    if isinstance(composition, FlatComposition):
+        return paint_panels(composition, time, theme, size)
     page = Page(size, theme)
     put_header(page, composition.title, composition.subtitle, time)
     footer = put_footer(page, composition)
@@ -174,8 +190,11 @@ def _camera(page: Page, composition: Composition, points: Array, footer: float) 
     s = page.scale
     words = [placed.box.grown(14 * s) for placed in page.texts]
     corners = _outermost(points)
-    for top in (36, 60, 84, 108, 132, 156):
-        area = PixelBox(64 * s, top * s, page.size[0] - 64 * s, footer - 10 * s)
+    # Beside the header if the data's shape allows it, else below.
+    header = [placed.box.bottom for placed in page.texts if placed.box.bottom < 0.5 * footer]
+    tops = [36 * s, 60 * s, 84 * s, 108 * s, 132 * s, 156 * s, max(header) + 16 * s]
+    for top in tops:
+        area = PixelBox(64 * s, top, page.size[0] - 64 * s, footer - 10 * s)
         camera = framed(corners, composition.azimuth, composition.height, area, page.size)
         seen = camera.pixels(points, page.size)
         if not any(box.holds(seen).any() for box in words):

@@ -222,8 +222,9 @@ def _add(plotter: Any, layer: Layer) -> None:
     options: dict[str, Any] = {
         "opacity": material.opacity,
         "lighting": material.lit,
-        "ambient": material.ambient,
-        "diffuse": material.diffuse,
+        # Without lights VTK adds both: only so are the colours those of the bar.
+        "ambient": material.ambient if material.lit else 0.0,
+        "diffuse": material.diffuse if material.lit else 1.0,
         "specular": material.specular,
         "specular_power": material.specular_power,
         "smooth_shading": material.lit,

@@ -34,6 +34,9 @@ class Theme:
         Edge of a wall.
     line : str
         Poloidal field lines.
+    critical : str
+        Critical surfaces.
+    critical_opacity : float
     key, fill, rim : float
         Intensities of the three lights that move with the camera.
     outer_share, inner_share : float
@@ -51,6 +54,8 @@ class Theme:
     haze_opacity: float
     outline: str
     line: str
+    critical: str
+    critical_opacity: float
     key: float
     fill: float
     rim: float
@@ -60,10 +65,20 @@ class Theme:
     maps: dict[str, tuple[str, float, float]]
 
     def colour_map(self, quantity: str) -> Colormap:
-        """Colour map of a quantity: "density", "vertical_field", "signed_field_on_lines"."""
+        """Colour map of a quantity, one of the keys of `maps`."""
         name, first, last = self.maps[quantity]
         colours = getattr(_maps, name)(np.linspace(first, last, 256))
         return ListedColormap(colours, name=f"{quantity} ({self.name})")
+
+    def signed_speed(self, limits: tuple[float, float]) -> Colormap:
+        """The map of speeds, and where the limits reach below 0 that of infall, from 0 outward."""
+        low, high = limits
+        if low >= 0:
+            return self.colour_map("speed")
+        below = max(1, round(512 * min(-low / (high - low), 1.0)))
+        falling = self.colour_map("infall")(np.linspace(1, 0, below))
+        rising = self.colour_map("speed")(np.linspace(0, 1, max(1, 512 - below)))
+        return ListedColormap(np.concatenate([falling, rising]), name=f"v_r ({self.name})")
 
     def colour(self, quantity: str, share: float) -> Rgb:
         """One colour of a quantity's map, as red, green and blue in 0 to 1."""
@@ -86,6 +101,8 @@ _DARK = Theme(
     haze_opacity=0.27,
     outline="#3a475c",
     line="#f2c14e",
+    critical="#4fb7a6",
+    critical_opacity=0.26,
     key=0.85,
     fill=0.38,
     rim=0.45,
@@ -96,6 +113,12 @@ _DARK = Theme(
         "density": ("oslo", 0.07, 0.96),
         "vertical_field": ("lajolla", 0.0, 1.0),
         "signed_field_on_lines": ("vik", 0.17, 0.83),
+        "signed_field": ("berlin", 0.0, 1.0),
+        "speed_on_lines": ("lipari", 0.22, 1.0),
+        "speed": ("lipari", 0.04, 1.0),
+        "infall": ("navia", 0.02, 0.85),
+        "current": ("acton", 0.04, 1.0),
+        "difference": ("vanimo", 0.0, 1.0),
     },
 )
 
@@ -109,6 +132,8 @@ _LIGHT = Theme(
     haze_opacity=0.26,
     outline="#aab2bd",
     line="#a34a12",
+    critical="#1f8f7d",
+    critical_opacity=0.24,
     key=0.80,
     fill=0.65,
     rim=0.60,
@@ -119,6 +144,12 @@ _LIGHT = Theme(
         "density": ("oslo_r", 0.03, 0.92),
         "vertical_field": ("lajolla_r", 0.0, 1.0),
         "signed_field_on_lines": ("vik", 0.08, 0.92),
+        "signed_field": ("vik", 0.03, 0.97),
+        "speed_on_lines": ("lipari_r", 0.0, 0.95),
+        "speed": ("lipari_r", 0.0, 0.95),
+        "infall": ("navia_r", 0.05, 0.9),
+        "current": ("acton_r", 0.07, 1.0),
+        "difference": ("broc", 0.0, 1.0),
     },
 )
 

@@ -10,7 +10,10 @@ from hypothesis import strategies as st
 from fieldviz.errors import RenderError
 from fieldviz.scenes.description import (
     AzimuthCut,
+    CurrentSheetView,
     FluxSheets,
+    MirrorCheck,
+    OutflowView,
     scene_from_toml,
     scene_named,
     scene_names,
@@ -42,13 +45,32 @@ SHEETS = st.builds(
 )
 
 
-@given(CUTS | SHEETS)
+WINDS = st.builds(
+    OutflowView,
+    line_count=st.integers(0, 2000),
+    launch_height=st.none() | numbers(0.1, 100),
+    critical=st.booleans(),
+    opened_azimuth=numbers(0, 340),
+)
+MIRRORS = st.builds(
+    MirrorCheck, scale_heights=numbers(0.1, 100), field_limit=st.none() | numbers(1e-9, 1e9)
+)
+CURRENTS = st.builds(
+    CurrentSheetView,
+    shown_azimuth=numbers(20, 360),
+    height_limit=st.none() | numbers(0.02, 10),
+    current_exponent=st.none() | numbers(-3, 3),
+)
+
+
+@given(CUTS | SHEETS | WINDS | MIRRORS | CURRENTS)
 def test_round_trip_through_toml(scene):
     assert scene_from_toml(scene_to_toml(scene)) == scene
 
 
 def test_every_scene_has_a_default_and_is_found_by_name():
-    assert set(scene_names()) == {"azimuth-cut", "flux-sheets"}
+    names = {"flux-sheets", "outflow", "azimuth-cut", "mirror-check", "current-sheet"}
+    assert set(scene_names()) == names
     for name in scene_names():
         assert scene_named(name).scene == name
 
@@ -71,6 +93,9 @@ def test_settings_left_out_keep_their_defaults():
         ('scene = "azimuth-cut"\n[settings]\nsector = 500', "between 5 and 180"),
         ('scene = "flux-sheets"\n[settings]\ndensity_limits = [1.0]', "two numbers"),
         ('scene = "flux-sheets"\n[settings]\ndensity_limits = [1.0, 0.0]', "increasing"),
+        ('scene = "outflow"\n[settings]\nlaunch_height = 0', "between 0.1 and 100"),
+        ('scene = "current-sheet"\n[settings]\nheight_limit = 0', "between 0.02 and 10"),
+        ('scene = "mirror-chek"', "did you mean 'mirror-check'"),
         ("scene = flux", "TOML"),
     ],
 )
