@@ -12,11 +12,12 @@ echo "== What is in a snapshot =="
 
 echo
 echo "== Pictures =="
-for theme in dark light; do
-    "$fieldviz" render sample_wedge/saltmarsh_002.h5 --scene flux-sheets --theme "$theme" \
-        -o "pictures/flux-sheets-$theme.png"
-    "$fieldviz" render sample_wedge/saltmarsh_002.h5 --scene azimuth-cut --theme "$theme" \
-        -o "pictures/azimuth-cut-$theme.png"
+for scene in flux-sheets outflow current-sheet azimuth-cut mirror-check; do
+    "$fieldviz" render sample_wedge/saltmarsh_002.h5 --scene "$scene" -o "pictures/$scene-dark.png"
+done
+for scene in flux-sheets mirror-check; do
+    "$fieldviz" render sample_wedge/saltmarsh_002.h5 --scene "$scene" --theme light \
+        -o "pictures/$scene-light.png"
 done
 "$fieldviz" render sample_wedge/two_levels.h5 --scene flux-sheets -o pictures/two-levels.png
 

@@ -21,16 +21,27 @@ if TYPE_CHECKING:
 
 __all__ = ["SCENES", "diagram_picture", "scene_pictures"]
 
-SCENES = ("flux-sheets", "azimuth-cut")
+SCENES = ("flux-sheets", "outflow", "azimuth-cut", "mirror-check", "current-sheet")
 FOLDER = "pictures"
 _SIZE = (1280, 720)
-_LARGEST_PNG = 500_000  # bytes; above, the page holds a smaller form of the same picture
-_TITLES = {"flux-sheets": "Flux sheets", "azimuth-cut": "Cut at constant azimuth"}
+_LARGEST_PNG = 150_000  # bytes; above, the page holds a smaller form of the same picture
+_TITLES = {
+    "flux-sheets": "Flux sheets",
+    "outflow": "Outflow",
+    "azimuth-cut": "Cut at constant azimuth",
+    "mirror-check": "Mirror check",
+    "current-sheet": "Current sheet",
+}
 _CAPTIONS = {
     "flux-sheets": "nested surfaces of the vertical field, weighted with radius so that all radii "
     "share a scale, in a ring with its front taken away, with field lines that thread them",
     "azimuth-cut": "a sector of the wedge, its upper half opened down to the midplane, with "
     "density on the walls and poloidal field lines",
+    "outflow": "streamlines that each carry the same mass, coloured by their poloidal speed, with "
+    "the Alfvén surface behind the star",
+    "mirror-check": "one side reflected onto the other and their difference, with the verdict",
+    "current-sheet": "the surface where the azimuthal field changes sign, coloured by the current, "
+    "and its section at the cut",
 }
 
 

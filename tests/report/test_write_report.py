@@ -325,5 +325,5 @@ def test_kept_numbers_are_used_again(tmp_path, series_folder, monkeypatch):
 
 
 def test_an_unknown_scene_is_refused(tmp_path, small_disc):
-    with pytest.raises(FieldvizError, match="expected scenes among flux-sheets, azimuth-cut"):
+    with pytest.raises(FieldvizError, match="expected scenes among flux-sheets, outflow"):
         write_report(snapshot(small_disc), tmp_path / "r", scenes=["sunset"])
