@@ -23,7 +23,9 @@ import numpy as np
 from numba import njit, prange
 
 import fieldviz as fv
+from fieldviz.snapshots.native import LAYOUT_MARK, LAYOUT_VERSION
 from fieldviz.wedge.coordinates import points_to_cartesian, vectors_to_cartesian
+from fieldviz.wedge.demo.build import disc_block, make_mesh
 from fieldviz.wedge.fields import MAGNETIC
 from fieldviz.wedge.halo import halo, halo_grid
 
@@ -350,6 +352,7 @@ def line_rows(snapshot: fv.Snapshot, mesh: str, count: int = 5000, repeats: int 
 
 LINE_MEMORY_PROBE = """
 import resource, sys, numpy as np, fieldviz as fv
+from fieldviz.wedge.demo.build import disc_block, make_mesh
 from fieldviz.wedge.fields import MAGNETIC
 snapshot = fv.demo_disc(shape=(48, 128, 192), precision="single")
 def peak():
@@ -380,7 +383,72 @@ def line_memory_rows(count: int = 10_000) -> list[Row]:
     return rows
 
 
-def measure(shape: tuple[int, int, int], folder: Path) -> list[Row]:
+def numbers_row(path: Path) -> Row:
+    """Every diagnostic of a snapshot, reading included, against reading all of it."""
+    from fieldviz.diagnostics.snapshot_numbers import measure as all_numbers
+
+    def numbers() -> None:
+        found = all_numbers(fv.read_snapshot(path))
+        assert not found.reasons, found.reasons
+
+    numbers()  # kernels compiled or loaded from the cache
+    worked, read = best_times(numbers, lambda: read_package(path), repeats=5)
+    return Row("all numbers of a snapshot, against reading it", worked, read, "s", 3.0)
+
+
+def write_large(path: Path, gigabytes: float) -> None:
+    """A snapshot of the demo disc in single precision, written block by block."""
+    n_theta, n_r, in_block = 256, 384, 8
+    count = max(1, round(gigabytes * 1e9 / (8 * 4 * in_block * n_theta * n_r)))
+    disc = fv.SaltmarshDisc(magnetic_turbulence=0.3, velocity_turbulence=0.3)
+    shape, pieces = (count * in_block, n_theta, n_r), (count, 1, 1)
+    mesh = make_mesh(disc, shape, 1, pieces, 0.0)
+    with h5py.File(path, "w") as file:
+        file.attrs[LAYOUT_MARK] = LAYOUT_VERSION
+        file.attrs.update({"time": 0.0, "mu0": 1.0, "gm": 1.0})
+        for number in range(count):
+            block = disc_block(disc, mesh, number, np.dtype(np.float32))
+            parts = {f"grid/{n}_edges": getattr(block, f"{n}_edges") for n in ("r", "theta", "phi")}
+            parts |= {f"cells/{name}": array for name, array in block.cells.items()}
+            parts |= {f"faces/{name}": array for name, array in block.faces.items()}
+            for where, array in parts.items():
+                if not number:
+                    file.create_dataset(where, (count, *array.shape), dtype=array.dtype)
+                file[where][number] = array
+
+
+NUMBERS_MEMORY_PROBE = """
+import sys
+from pathlib import Path
+import fieldviz as fv
+from fieldviz.diagnostics.snapshot_numbers import measure
+measure(fv.demo_disc(shape=(2, 48, 32), precision="single"))
+def resident(word):
+    lines = Path("/proc/self/status").read_text().splitlines()
+    return int(next(line.split()[1] for line in lines if line.startswith(word)))
+Path("/proc/self/clear_refs").write_text("5")  # forget the peak of the imports
+before = resident("VmRSS")
+found = measure(fv.read_snapshot(sys.argv[1]))
+assert not found.reasons, found.reasons
+print((resident("VmHWM") - before) * 1024)
+"""
+
+
+def numbers_memory_row(folder: Path, gigabytes: float) -> Row:
+    """Peak memory above the imports of every diagnostic of a large snapshot."""
+    path = folder / "large.h5"
+    write_large(path, gigabytes)
+    size = path.stat().st_size / 1e9
+    try:
+        command = [sys.executable, "-c", NUMBERS_MEMORY_PROBE, str(path)]
+        done = subprocess.run(command, capture_output=True, text=True, check=True)
+    finally:
+        path.unlink()
+    what = f"memory added by all numbers of a snapshot of {size:.1f} GB, against 1 GB"
+    return Row(what, float(done.stdout) / 1e6, 1e3, "MB", 1.0)
+
+
+def measure(shape: tuple[int, int, int], folder: Path, gigabytes: float) -> list[Row]:
     path = folder / "benchmark.h5"
     fv.write_snapshot(path, fv.demo_disc(shape=shape, precision="single"))
     snapshot = fv.read_snapshot(path)
@@ -401,6 +469,8 @@ def measure(shape: tuple[int, int, int], folder: Path) -> list[Row]:
         *line_rows(snapshot, "one level"),
         *line_rows(fv.demo_disc(shape=(24, 128, 96), levels=2), "two levels"),
         *line_memory_rows(),
+        numbers_row(path),
+        numbers_memory_row(folder, gigabytes),
     ]
 
 
@@ -408,9 +478,12 @@ def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--shape", type=int, nargs=3, default=(96, 256, 384), metavar="N")
     parser.add_argument("--json", type=Path, help="also write the rows to this file")
+    parser.add_argument(
+        "--large", action="store_true", help="memory of all numbers with 4 GB in place of 1 GB"
+    )
     arguments = parser.parse_args()
     with tempfile.TemporaryDirectory() as folder:
-        rows = measure(tuple(arguments.shape), Path(folder))
+        rows = measure(tuple(arguments.shape), Path(folder), 4.0 if arguments.large else 1.0)
     peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss // 1024
     print(f"{int(np.prod(arguments.shape)):,} cells; peak of this process {peak} MiB")
     for row in rows:

@@ -325,9 +325,8 @@ def _usual(snapshot: Snapshot) -> Request:
     if "velocity_phi" in flow:
         mass_pairs += [(name, OVER_KEPLER) for name in flow if name != "velocity_phi"]
         flow.append(OVER_KEPLER)
-    return Request(
-        (*gas, *field), tuple(flow), tuple(dict.fromkeys(pairs)), tuple(mass_pairs), True
-    )
+    volume = (*gas, *field, *(name for name in flow if name != "velocity_phi"))
+    return Request(volume, tuple(flow), tuple(dict.fromkeys(pairs)), tuple(mass_pairs), True)
 
 
 def _some_of(made: AzimuthMoments, request: Request) -> AzimuthMoments:

@@ -9,6 +9,8 @@ from __future__ import annotations
 import numpy as np
 from numba import njit, prange
 
+_TURNED_ROWS = 32  # of one page, turned round at once: they fit into a processor's own memory
+
 
 @njit(cache=True, nogil=True, parallel=True)
 def smooth_middle_axis(values, weights, first, count, out):
@@ -17,33 +19,58 @@ def smooth_middle_axis(values, weights, first, count, out):
     Row j takes `count[j]` rows from `first[j]` on with `weights[j]`. NaN where no
     row within reach has a number.
     """
+    for page in prange(values.shape[0]):
+        _smooth_rows(values[page], weights, first, count, out[page])
+
+
+@njit(cache=True, nogil=True, parallel=True)
+def smooth_last_axis(values, weights, first, count, out):
+    """The same along the last axis of (pages, n, m): some rows at a time, turned round."""
     pages, n, m = values.shape
     for page in prange(pages):
-        total = np.empty(m)
-        share = np.empty(m)
-        known = np.zeros(n, dtype=np.int64)
-        for row in range(n):
-            for i in range(m):
-                known[row] += 1 if values[page, row, i] - values[page, row, i] == 0.0 else 0
-        for j in range(n):
-            total[:] = 0.0
-            share[:] = 0.0
-            of_whole_rows = 0.0
-            for step in range(count[j]):
-                row, weight = first[j] + step, weights[j, step]
-                if known[row] == m:
-                    of_whole_rows += weight
-                    for i in range(m):
-                        total[i] += weight * values[page, row, i]
-                elif known[row] > 0:
-                    for i in range(m):
-                        x = values[page, row, i]
-                        good = x - x == 0.0
-                        total[i] += weight * x if good else 0.0
-                        share[i] += weight if good else 0.0
-            for i in range(m):
-                all_of_it = share[i] + of_whole_rows
-                out[page, j, i] = total[i] / all_of_it if all_of_it > 0.0 else np.nan
+        turned = np.empty((m, _TURNED_ROWS))
+        smooth = np.empty((m, _TURNED_ROWS))
+        for start in range(0, n, _TURNED_ROWS):
+            for j in range(_TURNED_ROWS):
+                # The last rows may be fewer: the very last one stands for those that are not.
+                row = min(start + j, n - 1)
+                for i in range(m):
+                    turned[i, j] = values[page, row, i]
+            _smooth_rows(turned, weights, first, count, smooth)
+            for j in range(min(_TURNED_ROWS, n - start)):
+                for i in range(m):
+                    out[page, start + j, i] = smooth[i, j]
+
+
+@njit(cache=True, nogil=True)
+def _smooth_rows(values, weights, first, count, out):
+    """Weighted means along the first axis of (n, m)."""
+    n, m = values.shape
+    total = np.empty(m)
+    share = np.empty(m)
+    known = np.zeros(n, dtype=np.int64)
+    for row in range(n):
+        for i in range(m):
+            known[row] += 1 if values[row, i] - values[row, i] == 0.0 else 0
+    for j in range(n):
+        total[:] = 0.0
+        share[:] = 0.0
+        of_whole_rows = 0.0
+        for step in range(count[j]):
+            row, weight = first[j] + step, weights[j, step]
+            if known[row] == m:
+                of_whole_rows += weight
+                for i in range(m):
+                    total[i] += weight * values[row, i]
+            elif known[row] > 0:
+                for i in range(m):
+                    x = values[row, i]
+                    good = x - x == 0.0
+                    total[i] += weight * x if good else 0.0
+                    share[i] += weight if good else 0.0
+        for i in range(m):
+            all_of_it = share[i] + of_whole_rows
+            out[j, i] = total[i] / all_of_it if all_of_it > 0.0 else np.nan
 
 
 @njit(cache=True, nogil=True)

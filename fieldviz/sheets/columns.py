@@ -5,6 +5,7 @@ Heights are angles from the midplane over H/R, positive above, as for the launch
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -96,13 +97,17 @@ class Columns:
         """Exact volumes, (n_phi, n_theta, n_r)."""
         return cell_volumes(self.r_edges, self.theta_edges, self.phi_edges)
 
-    def sampled(self, cells: Array) -> Array:
-        """A cell array interpolated linearly to the middles; in cells of that size, its values."""
+    def sampled(self, cells: Array, rows: slice = slice(None)) -> Array:
+        """A cell array interpolated linearly to the middles; in cells of that size, its values.
+
+        A new array in double precision, of some rows or of all.
+        """
         if self.grid.n_blocks == 1:
-            return np.asarray(cells[0], dtype=np.float64)
+            return np.array(cells[0][:, rows], dtype=np.float64)
         haloed = halo_array(self.grid, cells)
-        found = np.empty(self.shape)
-        theta, r = np.meshgrid(self.theta, self.r, indexing="ij")
+        chosen = self.theta[rows]
+        found = np.empty((len(self.phi), len(chosen), len(self.r)))
+        theta, r = np.meshgrid(chosen, self.r, indexing="ij")
         for page, phi in enumerate(self.phi):
             points = np.column_stack([r.ravel(), theta.ravel(), np.full(r.size, phi)])
             found[page] = PointSampler(self.grid, points).of_halo(haloed).reshape(r.shape)
@@ -129,14 +134,16 @@ class Columns:
 
     def smoothed_along_r(self, values: Array) -> Array:
         """Gaussian mean over 1 H in r; what is no number is left out of it."""
-        turned = np.ascontiguousarray(np.swapaxes(values, 1, 2))
-        turned = _smoothed(turned, centres(self.log_r), np.diff(self.log_r))
-        return np.swapaxes(turned, 1, 2)
+        from fieldviz.sheets._kernels import smooth_last_axis
+
+        return _smoothed(values, centres(self.log_r), np.diff(self.log_r), smooth_last_axis)
 
     def smoothed_along_theta(self, values: Array) -> Array:
         """Gaussian mean over 1 H in theta; what is no number is left out of it."""
         widths = np.diff(self.theta_edges) / self.thickness.h
-        return _smoothed(np.ascontiguousarray(values), self.heights, widths)
+        from fieldviz.sheets._kernels import smooth_middle_axis
+
+        return _smoothed(values, self.heights, widths, smooth_middle_axis)
 
     def percentiles(self, values: Array) -> tuple[float, float, float]:
         """16, 50 and 84 percent of a map over ln r and phi; NaN where nothing has a number."""
@@ -327,13 +334,11 @@ def _bands(x: Array, widths: Array) -> tuple[Array, Array, Array] | None:
     return bands, first, count
 
 
-def _smoothed(values: Array, x: Array, widths: Array) -> Array:
-    """Along the second axis."""
-    from fieldviz.sheets._kernels import smooth_middle_axis
-
+def _smoothed(values: Array, x: Array, widths: Array, kernel: Callable[..., None]) -> Array:
+    """By one of the compiled loops; x lies along the axis that this smooths."""
     bands = _bands(x, widths)
     if bands is None:
         return values
     out = np.empty(values.shape)
-    smooth_middle_axis(values, *bands, out)
+    kernel(np.ascontiguousarray(values), *bands, out)
     return out

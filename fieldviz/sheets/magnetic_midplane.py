@@ -149,9 +149,15 @@ def _current_ridge(snapshot: Snapshot, columns: Columns) -> Array:
     """Height at which |J_r| is largest, of J_r smoothed over 1 H in r."""
     current = once(snapshot, "current density", lambda: current_density(snapshot))
     # Farther out the wind carries stronger currents along its own streams.
-    near = np.abs(columns.heights) <= RIDGE_REACH
-    along = columns.sampled(np.asarray(current.r))[:, near]
+    near = _span(np.abs(columns.heights) <= RIDGE_REACH)
+    along = columns.sampled(np.asarray(current.r), near)
     along[columns.of_own_cell(current.one_sided)[:, near]] = np.nan
     strength = np.full(columns.shape, np.nan)
     strength[:, near] = np.abs(columns.smoothed_along_r(along))
     return highest(strength, columns.heights)[1]
+
+
+def _span(chosen: Array) -> slice:
+    """Rows next to one another as a slice."""
+    rows = np.flatnonzero(chosen)
+    return slice(int(rows[0]), int(rows[-1]) + 1) if rows.size else slice(0, 0)

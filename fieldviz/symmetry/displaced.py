@@ -138,10 +138,10 @@ def displaced_midplane(
 def _both_scores(tables: MeanTables, centre: Array) -> tuple[DisplacedScore, ...]:
     names = tuple(name for name in tables.means if name.startswith("magnetic"))
     found = []
+    mirrors = [table_mirror(tables.mesh, about) for about in (_MIDPLANE, centre)]
     for region, weight in _REGIONS:
         pair = []
-        for about in (np.full_like(centre, _MIDPLANE), centre):
-            mirror = table_mirror(tables.mesh, about)
+        for mirror in mirrors:
             weights = weights_of(tables, mirror, weight, region)
             energies = mean_energies(tables, mirror, weights, names)
             pair.append([_total_score(energies[name]) for name in names])

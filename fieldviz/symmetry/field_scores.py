@@ -12,6 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from fieldviz.symmetry.full_energies import full_energies
 from fieldviz.symmetry.mean_tables import (
     SPLIT,
     MeanTables,
@@ -19,15 +20,13 @@ from fieldviz.symmetry.mean_tables import (
     mean_tables,
     weights_of,
 )
-from fieldviz.symmetry.mirror import MIRROR_SIGNS, TableMirror, mirrored_cells, table_mirror
+from fieldviz.symmetry.mirror import MIRROR_SIGNS, TableMirror, table_mirror
 from fieldviz.wedge.snapshot import Snapshot
-from fieldviz.wedge.typing import Array, IntArray
+from fieldviz.wedge.typing import Array
 
 __all__ = ["FieldScore", "FieldScoreBand", "FieldScores", "field_scores", "field_word"]
 
 EVEN_SCORE = 0.6
-_MIDPLANE = 0.5 * np.pi
-_ON_MIDPLANE = 1e-9
 # A mean below a hundred thousandth of the full field is what is left of single precision.
 _ROUNDING = 1e-10
 
@@ -169,9 +168,7 @@ def field_energies(
     weights = weights_of(tables, mirror, weight, region)
     means = mean_energies(tables, mirror, weights, tuple(tables.means))
     even_mean = log_even_mean(tables, mirror, weights)
-    full = {name: np.zeros((2, tables.n_bands)) for name in tables.means}
-    for block in range(snapshot.grid.n_blocks):
-        _add_block(full, snapshot, tables, block, weights, even_mean)
+    full = full_energies(snapshot, tables, weights, even_mean)
     return {name: np.stack([means[name], full[name]]) for name in means}
 
 
@@ -196,56 +193,6 @@ def _halves(weights: Array, value: Array, other: Array) -> tuple[Array, Array]:
     known = np.isfinite(value) & np.isfinite(other) & (weights > 0)
     f, g = np.where(known, value, 0.0), np.where(known, other, 0.0)
     return weights * (0.5 * (f + g)) ** 2, weights * (0.5 * (f - g)) ** 2
-
-
-def _add_block(
-    full: dict[str, Array],
-    snapshot: Snapshot,
-    tables: MeanTables,
-    block: int,
-    weights: Array,
-    even_mean: Array,
-) -> None:
-    """Add the cells of one block.
-
-    On a mesh that mirrors onto itself those below the midplane would give the same once more: the
-    upper ones count twice.
-    """
-    _, theta, _ = snapshot.grid.cell_centres(block)
-    rows_on_mesh, columns_on_mesh, place = tables.mesh.block_cells(block)
-    shape = snapshot.grid.block_shape[1:]
-    per_cell = np.zeros(shape)
-    np.add.at(per_cell, np.ix_(rows_on_mesh, columns_on_mesh), weights[place])
-    if _mirrors_onto_itself(tables.mesh.theta_edges):
-        height = _MIDPLANE - theta
-        per_cell *= np.where(height > _ON_MIDPLANE, 2.0, 1.0 * (height > -_ON_MIDPLANE))[:, None]
-    rows = np.flatnonzero(per_cell.any(1))
-    if not rows.size:
-        return
-    turn = np.diff(snapshot.grid.phi_edges[block])[:, None, None] / snapshot.grid.period
-    weight = turn * per_cell[rows]
-    base = even_mean[place][_firsts(rows_on_mesh)[rows]][:, _firsts(columns_on_mesh)]
-    band = tables.band[place[1]][_firsts(columns_on_mesh)]
-    mirrored = mirrored_cells(snapshot, tables.formulas, block, rows)
-    for name, formula in tables.formulas.items():
-        value = np.asarray(formula(snapshot, block), dtype=np.float64)[:, rows]
-        other = mirrored[name]
-        if name == "density":
-            value, other = value - base, other - base
-        for sign, half in enumerate(_halves(weight, value, MIRROR_SIGNS[name] * other)):
-            per_column = half.sum((0, 1))
-            used = band >= 0
-            full[name][sign] += np.bincount(band[used], per_column[used], minlength=tables.n_bands)
-
-
-def _mirrors_onto_itself(theta_edges: Array) -> bool:
-    away = np.abs(theta_edges + theta_edges[::-1] - np.pi)
-    return bool(away.max() < _ON_MIDPLANE)
-
-
-def _firsts(cells: IntArray) -> IntArray:
-    """First place on the mesh of each cell of a block."""
-    return np.flatnonzero(np.diff(cells, prepend=-1))
 
 
 def scores_of_energies(

@@ -6,13 +6,20 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fieldviz.derived.azimuth_sums import MeridionalMesh, azimuth_moments
+from fieldviz.derived.azimuth_blocks import over_kepler
+from fieldviz.derived.azimuth_sums import (
+    OVER_KEPLER,
+    AzimuthMoments,
+    MeridionalMesh,
+    azimuth_moments,
+)
 from fieldviz.derived.current_density import current_density
 from fieldviz.errors import FieldvizError
 from fieldviz.symmetry.mirror import MIRROR_SIGNS, Formula, TableMirror
 from fieldviz.wedge.fields import MAGNETIC, VELOCITY
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
+from fieldviz.wind.chunks import by_chunks, same_type
 
 __all__ = ["REGIONS", "WEIGHTS", "MeanTables", "log_even_mean", "mean_tables", "weights_of"]
 
@@ -34,7 +41,7 @@ class MeanTables:
     momentum : table
         |rho v_p|.
     formulas : dict of name to function
-        The same quantities in cells of a block; density as ln(rho).
+        The same quantities in cells of a block, or cells and what is to be taken off.
     band : (n_r,) int array
         Band of each column by its middle; -1 outside.
     n_bands : int
@@ -85,29 +92,44 @@ def mean_tables(
     snapshot.require("score the symmetry of the fields", "density", *VELOCITY)
     names = ["density", *VELOCITY, *(name for name in MAGNETIC if snapshot.has(name))]
     formulas: dict[str, Formula] = {name: _cells_of(name) for name in names}
-    formulas["velocity_phi"] = _beyond_kepler
+    formulas["velocity_phi"] = over_kepler
     if current:
         found = current_density(snapshot)
         for axis in ("r", "theta", "phi"):
             formulas[f"current_{axis}"] = _part_of(getattr(found, axis))
     scored = tuple(name for name in MIRROR_SIGNS if name in formulas)
-    moments = azimuth_moments(
-        snapshot, volume=(*scored, _MOMENTUM), formulas={**formulas, _MOMENTUM: _momentum}
-    )
+    means, momentum, moments = _means(snapshot, scored, formulas)
     mesh = moments.mesh
     band = np.searchsorted(band_edges, mesh.r, side="right") - 1
     band[(band < 0) | (band >= len(band_edges) - 1)] = -1
     return MeanTables(
         mesh,
-        {name: moments.means[name] for name in scored},
-        moments.means[_MOMENTUM],
-        {**{name: formulas[name] for name in scored}, "density": _log_density},
+        means,
+        momentum,
+        {name: formulas[name] for name in scored},
         band,
         len(band_edges) - 1,
         h,
         reach,
         moments.notes,
     )
+
+
+def _means(
+    snapshot: Snapshot, scored: tuple[str, ...], formulas: dict[str, Formula]
+) -> tuple[dict[str, Array], Array, AzimuthMoments]:
+    """Means of what is scored, that of |rho v_p|, and what they rest on."""
+    own = {name: formulas[name] for name in scored if name.startswith("current")}
+    shared = {name: OVER_KEPLER if name == "velocity_phi" else name for name in scored}
+    moments = azimuth_moments(snapshot, volume=shared.values(), formulas=own)
+    only = azimuth_moments(snapshot, volume=(_MOMENTUM,), formulas={_MOMENTUM: _momentum})
+    if moments.n_left_out or only.n_left_out:
+        # What is left out of one is left out of all.
+        own[_MOMENTUM] = _momentum
+        volume = (*shared.values(), _MOMENTUM)
+        moments = only = azimuth_moments(snapshot, volume=volume, formulas=own)
+    means = {name: moments.means[its] for name, its in shared.items()}
+    return means, only.means[_MOMENTUM], moments
 
 
 def weights_of(tables: MeanTables, mirror: TableMirror, weight: str, region: str) -> Array:
@@ -175,22 +197,16 @@ def _part_of(array: Array) -> Formula:
     return lambda _, block: array[block]
 
 
-def _log_density(snapshot: Snapshot, block: int) -> Array:
-    density = snapshot.cell_block("density", block).astype(np.float64)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        return np.asarray(np.log(density))
-
-
-def _beyond_kepler(snapshot: Snapshot, block: int) -> Array:
-    """v_phi minus the Kepler speed at its cylindrical radius."""
-    r, theta, _ = snapshot.grid.cell_centres(block)
-    kepler = np.sqrt(snapshot.gm / (r * np.sin(theta)[:, None]))
-    return np.asarray(snapshot.cell_block("velocity_phi", block) - kepler)
-
-
 def _momentum(snapshot: Snapshot, block: int) -> Array:
-    density, v_r, v_theta = (
-        snapshot.cell_block(name, block).astype(np.float64)
-        for name in ("density", "velocity_r", "velocity_theta")
-    )
-    return np.asarray(density * np.hypot(v_r, v_theta))
+    from fieldviz.symmetry._kernels import mass_flux_size
+
+    names = ("density", "velocity_r", "velocity_theta")
+    fields = same_type([snapshot.cell_block(name, block) for name in names])
+    size = np.empty(fields[0].shape)
+
+    def work(start: int, stop: int) -> int:
+        mass_flux_size(*fields, start, stop, size)
+        return 0
+
+    by_chunks(len(size), size.size, work)
+    return size

@@ -2,18 +2,28 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
+from fieldviz.derived.azimuth_blocks import Formula
 from fieldviz.derived.azimuth_sums import MeridionalMesh
 from fieldviz.symmetry.theta_hats import theta_hats
 from fieldviz.wedge.grid import WedgeGrid
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array, IntArray
 
-__all__ = ["MIRROR_SIGNS", "Formula", "TableMirror", "mirrored_cells", "table_mirror"]
+__all__ = [
+    "MIRROR_SIGNS",
+    "Formula",
+    "MirrorPiece",
+    "TableMirror",
+    "mirror_pieces",
+    "mirrored_cells",
+    "table_mirror",
+    "with_less",
+]
 
 # v is a true vector and B an axial one: their signs are opposite.
 MIRROR_SIGNS: Mapping[str, int] = {
@@ -29,7 +39,6 @@ MIRROR_SIGNS: Mapping[str, int] = {
     "current_phi": 1,
 }
 
-Formula = Callable[[Snapshot, int], Array]
 _SAME_PLACE = 1e-9  # of the distance between two middles
 
 
@@ -70,21 +79,29 @@ def table_mirror(mesh: MeridionalMesh, centre: Array | float = 0.5 * np.pi) -> T
     wanted = 2 * about - middle
     low, high = np.empty_like(mesh.row_start), np.empty_like(mesh.row_start)
     share = np.empty(middle.shape)
-    for i in range(middle.shape[1]):
-        rows = np.unique(mesh.row_start[:, i])
-        nodes, x = middle[rows, i], wanted[:, i]
+    for alike in _alike(mesh):
+        rows = np.unique(mesh.row_start[:, alike[0]])
+        nodes, x = middle[rows, alike[0]], wanted[:, alike]
         if len(rows) == 1:
-            low[:, i], high[:, i], share[:, i] = rows[0], rows[0], 0.0
+            low[:, alike], high[:, alike], share[:, alike] = rows[0], rows[0], 0.0
             continue
         j = np.clip(np.searchsorted(nodes, x, side="right") - 1, 0, len(rows) - 2)
         part = np.clip((x - nodes[j]) / (nodes[j + 1] - nodes[j]), 0.0, 1.0)
-        low[:, i], high[:, i], share[:, i] = rows[j], rows[j + 1], part
+        low[:, alike], high[:, alike], share[:, alike] = rows[j], rows[j + 1], part
     share[share < _SAME_PLACE] = 0.0
     share[share > 1 - _SAME_PLACE] = 1.0
     # A cell that is cut by the end of what both sides reach may have its middle just beyond.
     half = 0.5 * (edges[mesh.row_stop] - edges[mesh.row_start])
     inside = (wanted >= edges[0] - half) & (wanted <= edges[-1] + half)
     return TableMirror(about - middle, about, low, high, share, inside)
+
+
+def _alike(mesh: MeridionalMesh) -> list[IntArray]:
+    """Columns that consist of the same cells."""
+    if mesh.is_even:
+        return [np.arange(mesh.row_start.shape[1])]
+    patterns, which = np.unique(mesh.row_start, axis=1, return_inverse=True)
+    return [np.flatnonzero(which.ravel() == number) for number in range(patterns.shape[1])]
 
 
 def mirrored_cells(
@@ -96,6 +113,7 @@ def mirrored_cells(
     ----------
     snapshot : Snapshot
     formulas : mapping of name to function (snapshot, block) -> (n_phi, n_theta, n_r) array
+        Or such an array and what is to be taken off it at each r and theta.
     block : int
     rows : (m,) int array
         Rows of the block, each far enough within the range that both sides have.
@@ -106,24 +124,68 @@ def mirrored_cells(
         Linear in theta; in phi and r the value of the cell that holds the point, which at equal
         levels is exact. One other block is in memory at a time.
     """
-    grid = snapshot.grid
+    from fieldviz.symmetry._kernels import add_mirrored
+
+    shape = snapshot.grid.block_shape
+    result = {name: np.zeros((shape[0], len(rows), shape[2])) for name in formulas}
+    for piece in mirror_pieces(snapshot.grid, block, rows):
+        for name, formula in formulas.items():
+            cells, less = with_less(formula(snapshot, piece.block))
+            add_mirrored(result[name], 0, cells, less, False, *piece.arrays)
+    return result
+
+
+@dataclass(frozen=True, eq=False)
+class MirrorPiece:
+    """What one block gives to the mirror points of another; see `_kernels.add_mirrored`.
+
+    Attributes
+    ----------
+    block : int
+        The block that gives.
+    azimuths, columns : (n_phi,), (n_r,) int arrays
+        Its cells that hold the points; -1 where none does.
+    used : (n_phi, n_r) bool array
+        Its columns that give.
+    row_start, rows, weights : arrays
+        Weights of its rows, as a sparse matrix (m, n_theta) by rows.
+    """
+
+    block: int
+    azimuths: IntArray
+    columns: IntArray
+    used: Array
+    row_start: IntArray
+    rows: IntArray
+    weights: Array
+
+    @property
+    def arrays(self) -> tuple[Array, ...]:
+        """As the kernel takes them."""
+        return (
+            self.azimuths, self.columns, self.used, self.row_start, self.rows, self.weights
+        )  # fmt: skip
+
+
+def mirror_pieces(grid: WedgeGrid, block: int, rows: IntArray) -> Iterator[MirrorPiece]:
+    """All that gives values to the points that mirror some rows of a block; see `mirrored_cells`.
+
+    Pieces of one giving block follow one another.
+    """
     r, theta, phi = grid.cell_centres(block)
     wanted = np.clip(np.pi - theta[rows], *grid.theta_range)
-    shape = (len(phi), len(rows), len(r))
-    result = {name: np.zeros(shape) for name in formulas}
     for other in _overlapping(grid, block, wanted):
-        k, own_k = _common(phi, grid.phi_edges[other])
-        i, own_i = _common(r, grid.r_edges[other])
-        hats = theta_hats(grid, other, wanted) if len(k) and len(i) else []
-        for name, formula in formulas.items() if hats else ():
-            cells = np.asarray(formula(snapshot, other), dtype=np.float64)
-            cells = cells[np.ix_(own_k, np.arange(cells.shape[1]), own_i)]
-            by_row = cells.transpose(1, 0, 2).reshape(cells.shape[1], -1)
-            for columns, weights in hats:
-                values = (weights @ by_row).reshape(-1, len(k), len(i)).transpose(1, 0, 2)
-                here = columns[np.ix_(own_k, own_i)][:, None]
-                result[name][np.ix_(k, np.arange(len(rows)), i)] += np.where(here, values, 0.0)
-    return result
+        azimuths, columns = _holding(phi, grid.phi_edges[other]), _holding(r, grid.r_edges[other])
+        if azimuths.max() >= 0 and columns.max() >= 0:
+            for used, weights in theta_hats(grid, int(other), wanted):
+                start, cells = (a.astype(np.int64) for a in (weights.indptr, weights.indices))
+                yield MirrorPiece(int(other), azimuths, columns, used, start, cells, weights.data)
+
+
+def with_less(made: Array | tuple[Array, Array]) -> tuple[Array, Array]:
+    """What a formula gives, as cells and what is to be taken off at each r and theta."""
+    cells, less = made if isinstance(made, tuple) else (made, np.zeros(np.shape(made)[1:]))
+    return np.ascontiguousarray(cells), np.ascontiguousarray(less, dtype=np.float64)
 
 
 def _overlapping(grid: WedgeGrid, block: int, wanted: Array) -> IntArray:
@@ -136,7 +198,7 @@ def _overlapping(grid: WedgeGrid, block: int, wanted: Array) -> IntArray:
     return np.flatnonzero(kept)
 
 
-def _common(middles: Array, edges: Array) -> tuple[IntArray, IntArray]:
-    """Which middles lie within the edges, and in which cells."""
-    inside = np.flatnonzero((middles >= edges[0]) & (middles < edges[-1]))
-    return inside, np.searchsorted(edges, middles[inside], side="right") - 1
+def _holding(middles: Array, edges: Array) -> IntArray:
+    """Cells that hold each of the middles, -1 outside the edges."""
+    inside = (middles >= edges[0]) & (middles < edges[-1])
+    return np.where(inside, np.searchsorted(edges, middles, side="right") - 1, -1)

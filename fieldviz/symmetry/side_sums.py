@@ -6,18 +6,18 @@ side, bin of azimuth and band of radius.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
 
 import numpy as np
-from scipy.sparse import csr_array
 
 from fieldviz.symmetry.jackknife import N_BLOCKS
 from fieldviz.symmetry.theta_hats import theta_hats
-from fieldviz.wedge.coordinates import cylindrical_components
 from fieldviz.wedge.fields import MAGNETIC
 from fieldviz.wedge.grid import WedgeGrid
 from fieldviz.wedge.snapshot import Snapshot
-from fieldviz.wedge.typing import Array
+from fieldviz.wedge.typing import Array, IntArray
+from fieldviz.wind.chunks import by_chunks, same_type
 from fieldviz.wind.surfaces import MatchedCones
 
 __all__ = ["SideSums", "azimuth_bins", "side_sums"]
@@ -26,6 +26,8 @@ _MIDPLANE = 0.5 * np.pi
 _MOST_BINS = 64
 _ROUNDING = 1e-12
 SIDES = (("upper", 1), ("lower", -1))
+# Flux density across a cone in some rows, and which cells of them are numbers.
+Flux = Callable[[IntArray], tuple[Array, Array]]
 
 
 @dataclass(eq=False)
@@ -149,7 +151,7 @@ class _BlockPass:
         self.annuli = _overlap(band_edges**2 / 2, r_edges**2 / 2)  # (n_r, n_bands)
         self.full_annuli = np.diff(band_edges**2 / 2)
         band = np.searchsorted(band_edges, self.r, side="right") - 1
-        self.in_band = (band[:, None] == np.arange(len(band_edges) - 1)).astype(np.float64)
+        self.band = np.where((band >= 0) & (band < len(band_edges) - 1), band, -1)
         self.hats = [
             (side, cone, *hat)
             for side, cone in enumerate((cones.upper, cones.lower))
@@ -159,98 +161,103 @@ class _BlockPass:
         self.volumes = self.grid.volumes(block)[0] / (phi_edges[1] - phi_edges[0])
 
     def fields(self, *names: str) -> list[Array]:
-        return [
-            self.snapshot.cell_block(name, self.block).astype(np.float64, copy=False)
-            for name in names
-        ]
+        return [self.snapshot.cell_block(name, self.block) for name in names]
 
     def add_to(self, sums: SideSums) -> None:
-        density, v_r, v_theta = self.fields("density", "velocity_r", "velocity_theta")
-        good = np.isfinite(density + v_r + v_theta)
-        used = self.in_band.any(1)
-        sums.left_out["gas"] += int(np.count_nonzero(~good[..., used]))
-        if not good.all():
-            density, v_r, v_theta = (np.where(good, f, 0.0) for f in (density, v_r, v_theta))
-        self._cones(sums, "outflow", density * v_theta, good)
-        mass = density * self.volumes
-        self._accretion(sums, mass * v_r)
-        weights = self._bend(sums, mass, v_r, v_theta)
+        names = ["density", "velocity_r", "velocity_theta"]
+        names += ["magnetic_r", "magnetic_theta"] if "lean" in sums.numerators else []
+        fields = same_type(self.fields(*names))
+        self._planes(sums, fields)
+        self._cones(sums, "outflow", self._mass_flux(fields))
         if "torque" in sums.numerators:
-            b_theta, b_phi = self.fields("magnetic_theta", "magnetic_phi")
-            good = np.isfinite(b_theta + b_phi)
-            sums.left_out["field"] += int(np.count_nonzero(~good[..., used]))
+            south = fields[4] if len(fields) > 4 else self.fields("magnetic_theta")[0]
+            south, around = same_type([south, *self.fields("magnetic_phi")])
+            sums.left_out["field"] += self._unknown(south, around)
+            self._cones(sums, "torque", self._torque(south, around))
+
+    def _unknown(self, first: Array, second: Array) -> int:
+        """Cells in bands where one of two fields is no number."""
+        from fieldviz.symmetry._kernels import unknown_cells
+
+        def work(start: int, stop: int) -> int:
+            count: int = unknown_cells(first, second, start, stop, self.band)
+            return count
+
+        return int(by_chunks(len(first), first.size, work))
+
+    def _planes(self, sums: SideSums, fields: tuple[Array, ...]) -> None:
+        """Add all but what crosses the cones; one set of numbers for each azimuth."""
+        from fieldviz.symmetry._kernels import side_planes
+
+        n_phi, n_theta, n_r = self.grid.block_shape
+        n_bands = sums.numerators["bend"].shape[-1]
+        found, totals = np.zeros((n_phi, 2, 5, n_bands)), np.zeros((n_phi, 4))
+        angle, reach = self.cones.angle, self.cones.reach
+        shares = np.array([self._share_between(angle, reach, sign) for _, sign in SIDES])
+        compared = self._share_between(0.0, reach, 1) + self._share_between(0.0, reach, -1)
+        gm, lever = self.snapshot.gm, self.r * np.sin(self.theta)[:, None]
+
+        def work(start: int, stop: int) -> int:
+            left_out: int = side_planes(
+                fields, start, stop, np.sin(self.theta), np.cos(self.theta), self.volumes,
+                np.sqrt(gm / lever), np.sqrt(gm * self.r), self.band, np.abs(self.height) < angle,
+                compared, shares, found, totals,
+            )  # fmt: skip
+            return left_out
+
+        sums.left_out["gas"] += int(by_chunks(n_phi, n_phi * n_theta * n_r, work))
+        widths = np.diff(self.grid.phi_edges[self.block])
+        for name, value in zip(
+            ("inflow", "inflow_torque", "inside", "outside"), widths @ totals, strict=True
+        ):
+            setattr(sums, name, getattr(sums, name) + float(value))
+        binned = np.einsum("bk,ksqn->qbsn", self.azimuth, found)
+        for name, place in (("bend", 0), ("lean", 3)):
+            if name in sums.numerators:
+                sums.numerators[name] += binned[place]
+                sums.denominators[name] += binned[place + 1]
+        sums.leaving += float(binned[1].sum())
+        sums.kepler += float(binned[2].sum())
+
+    def _mass_flux(self, fields: tuple[Array, ...]) -> Flux:
+        def of_rows(rows: IntArray) -> tuple[Array, Array]:
+            density, v_r, v_theta = (f[:, rows].astype(np.float64) for f in fields[:3])
+            good = np.isfinite(density + v_r + v_theta)
+            return np.where(good, density * v_theta, 0.0), good
+
+        return of_rows
+
+    def _torque(self, b_theta: Array, b_phi: Array) -> Flux:
+        def of_rows(rows: IntArray) -> tuple[Array, Array]:
+            south, around = (f[:, rows].astype(np.float64) for f in (b_theta, b_phi))
+            good = np.isfinite(south + around)
             # -R B_theta B_phi/mu0 is the southward flux of angular momentum by the field.
-            lever = -np.sin(self.theta)[:, None] * self.r / self.snapshot.mu0
-            self._cones(sums, "torque", np.where(good, lever * b_theta * b_phi, 0.0), good)
-            if "lean" in sums.numerators:
-                self._lean(sums, weights, self.fields("magnetic_r")[0], b_theta)
+            lever = -np.sin(self.theta[rows])[:, None] * self.r / self.snapshot.mu0
+            return np.where(good, lever * south * around, 0.0), good
 
-    def _binned(self, per_cell: Array) -> Array:
-        """Sum a density per radian over bins and bands, (n_bins, n_bands)."""
-        return np.asarray(self.azimuth @ per_cell.sum(1) @ self.in_band)
+        return of_rows
 
-    def _cones(self, sums: SideSums, name: str, southward: Array, good: Array) -> None:
-        for side, theta, columns, weights in self.hats:
-            share = np.where(columns, _at(weights, good.astype(np.float64)), 0.0)
-            flux = np.where(columns, _at(weights, southward), 0.0)
+    def _cones(self, sums: SideSums, name: str, southward: Flux) -> None:
+        """Add what crosses the cones, from the rows beside them."""
+        for side, theta, columns, hats in self.hats:
+            every = hats.toarray()[0]
+            rows = np.flatnonzero(every)
+            flux, good = southward(rows)
+            share, flux = (
+                np.where(columns, np.einsum("j,kji->ki", every[rows], cells), 0.0)
+                for cells in (good.astype(np.float64), flux)
+            )
             # Northward, that is minus theta-hat, leads away from the midplane above it.
             outward = -SIDES[side][1] * np.sin(theta) * flux
-            area = self.azimuth @ share @ self.annuli
-            sums.numerators[name][:, side] += self.azimuth @ outward @ self.annuli
+            area = self.azimuth @ (share @ self.annuli)
+            sums.numerators[name][:, side] += self.azimuth @ (outward @ self.annuli)
             sums.denominators[name][:, side] += area / (self.full_annuli * self.grid.period)
-
-    def _accretion(self, sums: SideSums, momentum_r: Array) -> None:
-        disc = np.abs(self.height) < self.cones.angle
-        widths = np.diff(self.grid.phi_edges[self.block])
-        radial = -np.einsum("k,kji,j,i->i", widths, momentum_r, disc, self.in_band.sum(1))
-        sums.inflow += float(radial.sum())
-        sums.inflow_torque += float((radial * np.sqrt(self.snapshot.gm * self.r)).sum())
-
-    def _bend(self, sums: SideSums, mass: Array, v_r: Array, v_theta: Array) -> list[Array]:
-        """Add the bend; return the weights of leaving gas on each side."""
-        momentum = mass * np.hypot(v_r, v_theta)
-        compared = self._share_between(0.0, self.cones.reach, 1)
-        compared += self._share_between(0.0, self.cones.reach, -1)
-        widths = np.diff(self.grid.phi_edges[self.block])
-        per_row = np.einsum("k,kji,i->j", widths, momentum, self.in_band.sum(1))
-        sums.inside += float(per_row @ compared)
-        sums.outside += float(per_row @ np.clip(1 - compared, 0.0, 1.0))
-        v_R, v_z = cylindrical_components(v_r, v_theta, self.theta[:, None])
-        kepler = np.sqrt(self.snapshot.gm / (self.r * np.sin(self.theta)[:, None]))
-        weights = []
-        for side, (_, sign) in enumerate(SIDES):
-            share = self._share_between(self.cones.angle, self.cones.reach, sign)[:, None]
-            weight = np.where(sign * v_z > 0, share * momentum, 0.0)
-            sums.numerators["bend"][:, side] += self._binned(weight * v_R)
-            there = self._binned(weight)
-            sums.denominators["bend"][:, side] += there
-            sums.leaving += float(there.sum())
-            sums.kepler += float(self._binned(weight * kepler).sum())
-            weights.append(weight)
-        return weights
 
     def _share_between(self, low: float, high: float, sign: int) -> Array:
         """Share of each row's volume between two angles on one side of the midplane."""
         height = sign * np.cos(self.grid.theta_edges[self.block])
         within = np.clip(height, np.sin(low), np.sin(high))
         return np.asarray(np.abs(np.diff(within) / np.diff(height)))
-
-    def _lean(self, sums: SideSums, weights: list[Array], b_r: Array, b_theta: Array) -> None:
-        """Angle of the poloidal field from the vertical, outward positive on either side."""
-        b_R, b_z = cylindrical_components(b_r, b_theta, self.theta[:, None])
-        for side, (_, sign) in enumerate(SIDES):
-            angle = np.degrees(np.arctan2(sign * b_R * np.where(b_z < 0, -1.0, 1.0), np.abs(b_z)))
-            weight = np.where(np.isfinite(angle), weights[side], 0.0)
-            angle = np.where(np.isfinite(angle), angle, 0.0)
-            sums.numerators["lean"][:, side] += self._binned(weight * angle)
-            sums.denominators["lean"][:, side] += self._binned(weight)
-
-
-def _at(weights: csr_array, cells: Array) -> Array:
-    """Interpolate (n_phi, n_theta, n_r) cells to one colatitude, (n_phi, n_r)."""
-    row = weights.toarray()[0]
-    used = np.flatnonzero(row)
-    return np.asarray(np.einsum("j,kji->ki", row[used], cells[:, used]))
 
 
 def _overlap(pieces: Array, edges: Array) -> Array:

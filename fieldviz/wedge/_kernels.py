@@ -106,7 +106,7 @@ def _beyond(first, second, c_ghost, c_first, c_second, positive):
 
 
 @njit(cache=True, nogil=True)
-def _fill_walls(values, r_c, theta_c, r_low, r_high, theta_low, theta_high, positive):
+def fill_walls(values, r_c, theta_c, r_low, r_high, theta_low, theta_high, positive):
     """Continue one block's values past the inner, outer, upper and lower wall."""
     n_phi, n_theta, n_r = values.shape
     for k in range(n_phi):
@@ -163,7 +163,7 @@ def fill_halos(
                             r, theta, phi, block, haloed, r_c, theta_c, phi_c, lines_r,
                             lines_theta, lines_phi, table, level, positive,
                         )  # fmt: skip
-        _fill_walls(
+        fill_walls(
             haloed[block], r_c[block], theta_c[block], r_c[block, 0] < r_in,
             r_c[block, n_r - 1] > r_out, theta_c[block, 0] < theta_up,
             theta_c[block, n_theta - 1] > theta_down, positive,

@@ -94,7 +94,7 @@ def halo_array(
     -------
     (n_blocks, n_phi + 2, n_theta + 2, n_r + 2) array
     """
-    from fieldviz.wedge._kernels import fill_halos
+    from fieldviz.wedge._kernels import fill_halos, fill_walls
 
     shape = (grid.n_blocks, *grid.block_shape)
     if cells.shape != shape:
@@ -107,6 +107,11 @@ def halo_array(
     if haloed is None:
         haloed = np.empty((shape[0], *(n + 2 for n in shape[1:])), dtype=cells.dtype)
     haloed[:, 1:-1, 1:-1, 1:-1] = cells
+    if grid.n_blocks == 1:
+        # Nothing to search for: the block is its own neighbour in azimuth, the rest are walls.
+        haloed[:, 0, 1:-1, 1:-1], haloed[:, -1, 1:-1, 1:-1] = cells[:, -1], cells[:, 0]
+        fill_walls(haloed[0], around.r[0], around.theta[0], True, True, True, True, positive)
+        return haloed
     # Coarse levels first: finer ones interpolate between coarse cells and coarse ghosts.
     for level in grid.levels:
         fill_halos(

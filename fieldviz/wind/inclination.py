@@ -6,12 +6,13 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fieldviz.derived.azimuth_sums import meridional_mesh
+from fieldviz.derived.azimuth_sums import MeridionalMesh, meridional_mesh
 from fieldviz.wedge.coordinates import cylindrical_components
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
+from fieldviz.wind.chunks import by_chunks, same_type
 from fieldviz.wind.launch_surfaces import LaunchSurface, Surface, SurfaceSide, launch_surface
-from fieldviz.wind.ring_means import ring_means
+from fieldviz.wind.ring_means import RingTotals
 from fieldviz.wind.side_fluxes import through_surface
 
 __all__ = ["COLD_LAUNCHING", "Inclination", "SideInclination", "inclination", "lean"]
@@ -20,6 +21,7 @@ COLD_LAUNCHING = 30.0  # degrees from the vertical: Blandford & Payne 1982
 SIDEWAYS = 0.05  # |B_z|/|B_p| below which a line counts as lying at 90 degrees
 _MIDPLANE = 0.5 * np.pi
 _WORK = "work out the inclination of the field"
+_FIELDS = ("density", "velocity_r", "velocity_theta", "magnetic_r", "magnetic_theta")
 CAVEAT = (
     "the criterion of 30 degrees is for cold gas (Blandford & Payne 1982): winds driven by heat or "
     "magnetic pressure can start below it, so that failing it does not mean no wind"
@@ -141,16 +143,10 @@ def inclination(
     The lean is that of the cells' own field, not of its mean. Weights, and weights times the lean,
     are linear in theta between cells.
     """
-    snapshot.require(
-        _WORK, "density", "velocity_r", "velocity_theta", "magnetic_r", "magnetic_theta"
-    )
+    snapshot.require(_WORK, *_FIELDS)
     if not isinstance(surface, LaunchSurface):
         surface = launch_surface(snapshot, surface, thickness=thickness)
-    sums, notes = [], []
-    for side in surface.sides:
-        found, its_notes = _sums(snapshot, side, radii)
-        sums.append(found)
-        notes += [note for note in its_notes if note not in notes]
+    sums, notes = _sums(snapshot, surface, radii)
     upper, lower = (_side(one.side, part) for one, part in zip(surface.sides, sums, strict=True))
     known = [part for one, part in zip(surface.sides, sums, strict=True) if one.there.any()]
     total = _side("both", np.sum(known, axis=0) if known else np.full(4, np.nan))
@@ -161,50 +157,83 @@ _NAMES = ("leaving", "steep", "leaning", "sideways")
 
 
 def _sums(
-    snapshot: Snapshot, side: SurfaceSide, radii: tuple[float, float] | None
-) -> tuple[Array, tuple[str, ...]]:
-    """Mass that leaves, and the same for steep lines, times the lean, and for sideways lines."""
-    if not side.there.any():
-        return np.full(4, np.nan), ()
+    snapshot: Snapshot, surface: LaunchSurface, radii: tuple[float, float] | None
+) -> tuple[list[Array], list[str]]:
+    """For each side the mass that leaves, the same for steep lines, times the lean, sideways."""
     mesh = meridional_mesh(snapshot.grid)
-
-    def values(block: int) -> tuple[Array, list[Array]]:
-        _, cells, place = mesh.block_cells(block)
-        slope = np.bincount(cells, np.nan_to_num(side.slope[place[1]])) / np.bincount(cells)
-        found = _weighted(snapshot, block, side.sign, slope)
-        return snapshot.cell_block("density", block) > 0, [found[name] for name in _NAMES]
-
-    means, notes = ring_means(
-        snapshot, mesh, _NAMES, values, smooth=not np.any(side.slope[side.there])
-    )
     used = np.ones(len(mesh.r), dtype=bool)
     if radii is not None:
         used = (mesh.r >= radii[0]) & (mesh.r <= radii[1])
-    found = []
-    for name in _NAMES:
-        # Southward is what the integral takes, and it turns the sign above the midplane.
-        table = -side.sign * means[name]
-        net, _, _ = through_surface(mesh, side, table, np.abs(table))
-        found.append(net[used].sum())
-    return np.array(found), notes
+    totals = _totals(snapshot, mesh, [side for side in surface.sides if side.there.any()])
+    sums, notes = [], []
+    for side in surface.sides:
+        if side.side not in totals:
+            sums.append(np.full(4, np.nan))
+            continue
+        found = []
+        for mean in totals[side.side].means().values():
+            # Southward is what the integral takes, and it turns the sign above the midplane.
+            table = -side.sign * mean
+            net, _, _ = through_surface(mesh, side, table, np.abs(table))
+            found.append(net[used].sum())
+        sums.append(np.array(found))
+        notes += [note for note in totals[side.side].notes if note not in notes]
+    return sums, notes
 
 
-def _weighted(snapshot: Snapshot, block: int, sign: int, slope: Array) -> dict[str, Array]:
-    density, v_r, v_theta, b_r, b_theta = (
-        snapshot.cell_block(name, block).astype(np.float64)
-        for name in ("density", "velocity_r", "velocity_theta", "magnetic_r", "magnetic_theta")
-    )
-    theta = snapshot.grid.cell_centres(block)[1][:, None]
-    leaving = np.maximum(-sign * density * (v_theta - slope * v_r), 0.0)
-    degrees, sideways = lean(b_r, b_theta, theta)
-    # Without field there is no lean; where nothing leaves none is needed.
-    degrees = np.where(leaving == 0, 0.0, degrees)
-    return {
-        "leaving": leaving,
-        "steep": np.where(np.isnan(degrees), np.nan, leaving * (degrees > COLD_LAUNCHING)),
-        "leaning": leaving * degrees,
-        "sideways": leaving * sideways,
+def _totals(
+    snapshot: Snapshot, mesh: MeridionalMesh, sides: list[SurfaceSide]
+) -> dict[str, RingTotals]:
+    """Sums along azimuth of each side that has a surface, in one pass over the blocks."""
+    totals = {
+        side.side: RingTotals(snapshot, mesh, _NAMES, not np.any(side.slope[side.there]))
+        for side in sides
     }
+    near = np.array([_near(mesh, side) for side in sides]).reshape(-1, len(mesh.theta))
+    slopes = np.array([np.nan_to_num(side.slope) for side in sides])
+    for block in range(snapshot.grid.n_blocks if sides else 0):
+        rows, columns, place = mesh.block_cells(block)
+        own_slopes = np.array([np.bincount(columns, s[place[1]]) for s in slopes])
+        own_slopes /= np.bincount(columns)
+        wanted = np.array([np.bincount(rows, n[place[0]]) > 0 for n in near])
+        # Slopes within coarse cells come from the next rows.
+        wanted[:, 1:] |= wanted[:, :-1].copy()
+        wanted[:, :-1] |= wanted[:, 1:].copy()
+        signs = np.array([float(side.sign) for side in sides])
+        covered, sums, left_out = _block_sums(snapshot, block, signs, own_slopes, wanted)
+        for number, total in enumerate(totals.values()):
+            total.add(block, covered[number], sums[number], int(left_out[number]))
+    return totals
+
+
+def _near(mesh: MeridionalMesh, side: SurfaceSide) -> Array:
+    """Rows between which values on the surface are interpolated, and all between, (n_theta,)."""
+    ends = np.concatenate([side.inner[side.there], side.outer[side.there]])
+    first, last = np.searchsorted(mesh.theta_edges, [ends.min(), ends.max()])
+    rows = np.arange(len(mesh.theta))
+    return (rows >= first - 2) & (rows <= last + 1)
+
+
+def _block_sums(
+    snapshot: Snapshot, block: int, signs: Array, slopes: Array, wanted: Array
+) -> tuple[Array, Array, Array]:
+    """Azimuth covered, sums and cells left out of one block; see `_kernels.lean_rows`."""
+    from fieldviz.wind._kernels import lean_rows
+
+    fields = same_type([snapshot.cell_block(name, block) for name in _FIELDS])
+    theta = snapshot.grid.cell_centres(block)[1]
+    sine, cosine, steps = np.sin(theta), np.cos(theta), np.diff(snapshot.grid.phi_edges[block])
+    shape = (len(theta), slopes.shape[1])
+    covered, sums = np.zeros((len(signs), *shape)), np.zeros((len(signs), len(_NAMES), *shape))
+
+    def work(start: int, stop: int) -> Array:
+        left_out: Array = lean_rows(
+            fields, start, stop, steps, sine, cosine, signs, slopes, wanted, COLD_LAUNCHING,
+            SIDEWAYS, covered, sums,
+        )  # fmt: skip
+        return left_out
+
+    return covered, sums, by_chunks(len(theta), int(np.prod(snapshot.grid.block_shape)), work)
 
 
 def _side(side: str, sums: Array) -> SideInclination:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -11,7 +11,8 @@ from fieldviz.derived.azimuth_sums import MeridionalMesh
 from fieldviz.wedge.fields import MAGNETIC, VELOCITY
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
-from fieldviz.wind.ring_means import ring_means
+from fieldviz.wind.chunks import by_chunks, same_type
+from fieldviz.wind.ring_means import RingTotals
 
 __all__ = ["ABSENT_GAMMA", "QUANTITIES", "FluxTables", "excess_density", "flux_tables"]
 
@@ -34,7 +35,8 @@ _NEEDS = {
     "heat": ("pressure", *VELOCITY),
 }
 _MIDPLANE = 0.5 * np.pi
-_Fields = dict[str, Array]
+_FIELDS = ("density", "pressure", *VELOCITY, *MAGNETIC)  # in the order of the kernel
+_KINDS = ("r", "theta", "size")
 
 
 @dataclass(frozen=True, eq=False)
@@ -62,72 +64,15 @@ class FluxTables:
     notes: tuple[str, ...]
 
 
-class _Flow:
-    """Fluxes of one block at a time; its fields are read once."""
-
-    def __init__(self, snapshot: Snapshot, names: tuple[str, ...]) -> None:
-        self._snapshot, self._names = snapshot, names
-        self._block = -1
-        self._fields: _Fields = {}
-
-    def fields(self, block: int) -> _Fields:
-        if block != self._block:
-            self._fields = {
-                name: self._snapshot.cell_block(name, block).astype(np.float64)
-                for name in self._names
-            }
-            r, theta, _ = self._snapshot.grid.cell_centres(block)
-            self._fields |= {"r": r, "R": r * np.sin(theta)[:, None]}
-            self._block = block
-        return self._fields
-
-    def flux(self, quantity: str, component: str, block: int) -> Array:
-        """One component of a flux density, (n_phi, n_theta, n_r)."""
-        with np.errstate(invalid="ignore", over="ignore"):
-            return _FORMULAS[quantity](self.fields(block), component, self._snapshot)
-
-
-def _carried(f: _Fields, component: str) -> Array:
-    return f["density"] * f[f"velocity_{component}"]
-
-
-def _specific_excess(f: _Fields, snapshot: Snapshot) -> Array:
-    """R v_phi - sqrt(GM r): angular momentum per mass beyond Kepler's on the midplane."""
-    return np.asarray(f["R"] * f["velocity_phi"] - np.sqrt(snapshot.gm * f["r"]))
-
-
-def _square(f: _Fields, kind: str) -> Array:
-    return f[f"{kind}_r"] ** 2 + f[f"{kind}_theta"] ** 2 + f[f"{kind}_phi"] ** 2
-
-
-def _poynting(f: _Fields, component: str, snapshot: Snapshot) -> Array:
-    along = sum(f[v] * f[b] for v, b in zip(VELOCITY, MAGNETIC, strict=True))
-    flux = _square(f, "magnetic") * f[f"velocity_{component}"] - along * f[f"magnetic_{component}"]
-    return np.asarray(flux / snapshot.mu0)
-
-
-def _enthalpy(f: _Fields, component: str, snapshot: Snapshot) -> Array:
-    assert snapshot.gamma is not None
-    factor = snapshot.gamma / (snapshot.gamma - 1)
-    return np.asarray(factor * f["pressure"] * f[f"velocity_{component}"])
-
-
-_FORMULAS: dict[str, Callable[[_Fields, str, Snapshot], Array]] = {
-    "mass": lambda f, c, s: _carried(f, c),
-    "kinetic_torque": lambda f, c, s: f["R"] * f["velocity_phi"] * _carried(f, c),
-    "excess_torque": lambda f, c, s: _carried(f, c) * _specific_excess(f, s),
-    "kinetic_energy": lambda f, c, s: 0.5 * _square(f, "velocity") * _carried(f, c),
-    "gravity": lambda f, c, s: -s.gm / f["r"] * _carried(f, c),
-    "magnetic_torque": lambda f, c, s: -f["R"] * f["magnetic_phi"] * f[f"magnetic_{c}"] / s.mu0,
-    "poynting": _poynting,
-    "enthalpy": _enthalpy,
-}
-
-
 def excess_density(snapshot: Snapshot, block: int) -> Array:
     """Rho (R v_phi - sqrt(GM r)) of one block, (n_phi, n_theta, n_r)."""
-    f = _Flow(snapshot, ("density", "velocity_phi")).fields(block)
-    return np.asarray(f["density"] * _specific_excess(f, snapshot))
+    density, v_phi = (
+        snapshot.cell_block(name, block).astype(np.float64) for name in ("density", "velocity_phi")
+    )
+    r, theta, _ = snapshot.grid.cell_centres(block)
+    lever = r * np.sin(theta)[:, None]
+    # Angular momentum per mass beyond Kepler's on the midplane.
+    return np.asarray(density * (lever * v_phi - np.sqrt(snapshot.gm * r)))
 
 
 def flux_tables(
@@ -156,18 +101,15 @@ def flux_tables(
     one of them spoils no other. Such cells are left out and counted.
     """
     absent = {quantity: _reason(snapshot, group) for quantity, group in QUANTITIES.items()}
-    found: dict[str, dict[str, Array]] = {"r": {}, "theta": {}, "size": {}}
+    found: dict[str, dict[str, Array]] = {kind: {} for kind in _KINDS}
     notes: list[str] = []
-    for group in dict.fromkeys(QUANTITIES.values()):
-        names = [q for q, its in QUANTITIES.items() if its == group and not absent[q]]
-        if not names:
-            continue
-        columns = [(quantity, kind) for quantity in names for kind in found]
-        means, left_out = _averaged(snapshot, mesh, group, columns, slopes)
+    for group, total in _summed(snapshot, mesh, absent, slopes).items():
+        names = _quantities(group)
+        means = total.means()
         for kind, tables in found.items():
             tables |= {q: means[f"{q} {kind}"] for q in names}
         what = ", ".join(names).replace("_", " ")
-        notes += [f"{what}: {note}" for note in left_out]
+        notes += [f"{what}: {note}" for note in total.notes]
     reasons = {quantity: reason for quantity, reason in absent.items() if reason}
     return FluxTables(
         mesh, found["r"], found["theta"], found["size"], reasons,
@@ -175,52 +117,83 @@ def flux_tables(
     )  # fmt: skip
 
 
-def _averaged(
+def _quantities(group: str) -> list[str]:
+    return [quantity for quantity, its in QUANTITIES.items() if its == group]
+
+
+def _summed(
     snapshot: Snapshot,
     mesh: MeridionalMesh,
-    group: str,
-    columns: list[tuple[str, str]],
+    absent: Mapping[str, str],
     slopes: tuple[Array, Array] | None,
-) -> tuple[dict[str, Array], tuple[str, ...]]:
-    flow = _Flow(snapshot, _NEEDS[group])
+) -> dict[str, RingTotals]:
+    """Totals of each group that is there; the fields of a block are read once for all of them."""
+    wanted = np.array([not absent[_quantities(group)[0]] for group in _NEEDS])
+    totals, places = {}, {}
+    for group in np.array(list(_NEEDS))[wanted]:
+        names = [f"{q} {kind}" for q in _quantities(group) for kind in _KINDS]
+        # The slope of a surface may jump from column to column: nothing to make linear then.
+        smooth = [name for name in names if slopes is None or not name.endswith(" size")]
+        totals[str(group)] = RingTotals(snapshot, mesh, names, smooth)
+        first = list(QUANTITIES).index(_quantities(group)[0])
+        places[str(group)] = slice(first, first + len(_quantities(group)))
+    if not totals:
+        return {}
+    for block in range(snapshot.grid.n_blocks):
+        covered, sums, left_out = _block_sums(snapshot, mesh, block, wanted, slopes)
+        for number, group in enumerate(_NEEDS):
+            if group in totals:
+                its = sums[places[group]].reshape(-1, *covered.shape[1:])
+                totals[group].add(block, covered[number], its, int(left_out[number]))
+    return totals
 
-    def values(block: int) -> tuple[Array, list[Array]]:
-        found = []
-        for quantity, kind in columns:
-            if kind in ("r", "theta"):
-                found.append(flow.flux(quantity, kind, block))
-                continue
-            found.append(np.abs(_across(flow, quantity, snapshot, mesh, slopes, block)))
-        good = np.ones(snapshot.grid.block_shape, dtype=bool)
-        if group == "gas":
-            # Gas without a positive density counts as without a number.
-            good &= flow.fields(block)["density"] > 0
-        return good, found
 
-    names = [f"{q} {kind}" for q, kind in columns]
-    # The slope of a surface may jump from column to column: nothing to make linear then.
-    smooth = [name for name in names if slopes is None or not name.endswith(" size")]
-    return ring_means(snapshot, mesh, names, values, smooth=smooth)
-
-
-def _across(
-    flow: _Flow,
-    quantity: str,
+def _block_sums(
     snapshot: Snapshot,
     mesh: MeridionalMesh,
-    slopes: tuple[Array, Array] | None,
     block: int,
+    wanted: Array,
+    slopes: tuple[Array, Array] | None,
+) -> tuple[Array, Array, Array]:
+    """Azimuth covered, sums and cells left out of one block; see `_kernels.flux_rows`."""
+    from fieldviz.wind._kernels import flux_rows
+
+    groups = zip(_NEEDS.values(), wanted, strict=True)
+    needed = {name for names, there in groups if there for name in names}
+    there = np.array([name in needed for name in _FIELDS])
+    read = same_type([snapshot.cell_block(n, block) for n in _FIELDS if n in needed])
+    fields = tuple(read[place] for place in np.maximum(np.cumsum(there) - 1, 0))
+    r, theta, _ = snapshot.grid.cell_centres(block)
+    lever = r * np.sin(theta)[:, None]
+    kepler, well = np.sqrt(snapshot.gm * r), -snapshot.gm / r
+    slope = _slope_rows(snapshot, mesh, block, slopes)
+    gamma = snapshot.gamma or 0.0
+    heat = gamma / (gamma - 1) if gamma > 1 else 0.0
+    covered, sums = np.zeros((len(wanted), *lever.shape)), np.zeros((8, 3, *lever.shape))
+    steps = np.diff(snapshot.grid.phi_edges[block])
+
+    def work(start: int, stop: int) -> Array:
+        left_out: Array = flux_rows(
+            fields, there, start, stop, steps, lever, kepler, well, slope, wanted,
+            snapshot.mu0, heat, covered, sums,
+        )  # fmt: skip
+        return left_out
+
+    return covered, sums, by_chunks(len(theta), int(np.prod(snapshot.grid.block_shape)), work)
+
+
+def _slope_rows(
+    snapshot: Snapshot, mesh: MeridionalMesh, block: int, slopes: tuple[Array, Array] | None
 ) -> Array:
-    """Southward component across the surface of the side on which each cell lies."""
-    southward = flow.flux(quantity, "theta", block)
+    """Slope of the surface of the side on which each cell lies, (n_theta, n_r)."""
+    shape = snapshot.grid.block_shape[1:]
     if slopes is None:
-        return southward
+        return np.zeros(shape)
     _, cells, place = mesh.block_cells(block)
     count = np.bincount(cells)
     upper, lower = (np.bincount(cells, np.nan_to_num(s[place[1]])) / count for s in slopes)
     above = snapshot.grid.cell_centres(block)[1] < _MIDPLANE
-    slope = np.where(above[:, None], upper, lower)
-    return np.asarray(southward - slope * flow.flux(quantity, "r", block))
+    return np.where(above[:, None], upper, lower)
 
 
 def _reason(snapshot: Snapshot, group: str) -> str:

@@ -7,11 +7,13 @@ from collections.abc import Callable, Sequence
 import numpy as np
 
 from fieldviz.derived.azimuth_sums import MeridionalMesh
-from fieldviz.wedge.geometry import centres
+from fieldviz.wedge.geometry import cell_volumes, centres
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array
 
-__all__ = ["ring_means"]
+__all__ = ["RingTotals", "ring_means"]
+
+_UNIT = np.array([0.0, 1.0])
 
 
 def ring_means(
@@ -50,51 +52,103 @@ def ring_means(
     the block itself, before blocks are joined: `azimuth_moments` would take it as constant there,
     which is of first order where blocks of different levels share a ring.
     """
-    shape = (len(mesh.theta), len(mesh.r))
-    weight, totals = np.zeros(shape), {name: np.zeros(shape) for name in names}
-    count, lost = 0, 0.0
+    totals = RingTotals(snapshot, mesh, names, smooth)
     for block in range(snapshot.grid.n_blocks):
         good, arrays = values(block)
         for array in arrays:
             good = good & np.isfinite(array)
-        if not good.all():
-            count += int(np.count_nonzero(~good))
-            lost += float(np.sum(snapshot.grid.volumes(block), where=~good))
         azimuth = good * np.diff(snapshot.grid.phi_edges[block])[:, None, None]
-        covered = azimuth.sum(0)
-        rows, columns, place = mesh.block_cells(block)
-        share = covered[np.ix_(rows, columns)]
-        weight[place] += share
-        for name, array in zip(names, arrays, strict=True):
-            sums = (azimuth * np.where(good, array, 0.0)).sum(0)
-            mean = np.divide(sums, covered, out=np.full_like(sums, np.nan), where=covered > 0)
-            fine = mean[np.ix_(rows, columns)]
-            if smooth is True or (smooth is not False and name in smooth):
-                fine = fine + _within_cells(mean, snapshot, mesh, block)
-            totals[name][place] += np.where(share > 0, share * fine, 0.0)
-    means = {
-        name: np.divide(total, weight, out=np.full(shape, np.nan), where=weight > 0)
-        for name, total in totals.items()
-    }
-    return means, _notes(count, lost / snapshot.grid.wedge_volume)
+        sums = [(azimuth * np.where(good, array, 0.0)).sum(0) for array in arrays]
+        left_out = int(np.count_nonzero(~good))
+        totals.add(block, azimuth.sum(0), np.array(sums), left_out)
+    return totals.means(), totals.notes
 
 
-def _within_cells(
-    mean: Array, snapshot: Snapshot, mesh: MeridionalMesh, block: int
-) -> Array | float:
-    """Linear part within coarse cells of a block's ring mean, on the places it covers."""
-    rows, columns, place = mesh.block_cells(block)
-    linear: Array | float = 0.0
-    edges = (snapshot.grid.theta_edges[block], snapshot.grid.r_edges[block])
-    wanted = (mesh.theta[place[0]], mesh.r[place[1]])
-    for axis, cells in enumerate((rows, columns)):
-        middles = centres(edges[axis])
-        if len(cells) == len(middles) or len(middles) < 2:
-            continue
-        slope = np.nan_to_num(np.gradient(mean, middles, axis=axis))[np.ix_(rows, columns)]
-        offset = wanted[axis] - middles[cells]
-        linear = linear + slope * (offset[:, None] if axis == 0 else offset)
-    return linear
+class RingTotals:
+    """Sums along azimuth of some quantities on the mesh, grown block by block.
+
+    Parameters
+    ----------
+    snapshot, mesh, names, smooth
+        As of `ring_means`.
+    """
+
+    def __init__(
+        self,
+        snapshot: Snapshot,
+        mesh: MeridionalMesh,
+        names: Sequence[str],
+        smooth: bool | Sequence[str] = True,
+    ) -> None:
+        self._snapshot, self._mesh, self._names = snapshot, mesh, tuple(names)
+        smoothed = names if smooth is True else (smooth or ())
+        self._smooth = np.array([name in smoothed for name in names], dtype=bool)
+        shape = (len(mesh.theta), len(mesh.r))
+        self._weight, self._totals = np.zeros(shape), np.zeros((len(names), *shape))
+        self._count, self._lost = 0, 0.0
+
+    def add(self, block: int, covered: Array, sums: Array, left_out: int) -> None:
+        """Take in one block.
+
+        Parameters
+        ----------
+        block : int
+        covered : (n_theta, n_r) array
+            Azimuth of the cells that were used, radians.
+        sums : (n_names, n_theta, n_r) array
+            Values times widths in azimuth of the same cells; overwritten.
+        left_out : int
+            Cells that were not used.
+        """
+        grid = self._snapshot.grid
+        if left_out:
+            self._count += left_out
+            turn = np.ptp(grid.phi_edges[block])
+            volumes = cell_volumes(*grid.edges(block)[:2], _UNIT)[0]
+            self._lost += float(np.sum((turn - covered) * volumes))
+        mean = np.divide(sums, covered, out=sums, where=covered > 0)
+        rows, columns, place = self._mesh.block_cells(block)
+        share, fine = covered, mean
+        if len(rows) > mean.shape[1] or len(columns) > mean.shape[2]:
+            share = covered[np.ix_(rows, columns)]
+            fine = mean[:, rows][:, :, columns]
+            if self._smooth.any():
+                mean[:, ~(covered > 0)] = np.nan
+                fine[self._smooth] += self._within_cells(mean[self._smooth], block)
+        self._weight[place] += share
+        np.multiply(share, fine, out=fine)
+        if not np.all(share > 0):
+            fine[:, ~(share > 0)] = 0.0
+        self._totals[:, place[0], place[1]] += fine
+
+    def _within_cells(self, mean: Array, block: int) -> Array | float:
+        """Linear part within coarse cells of a block's ring means, on the places it covers."""
+        rows, columns, place = self._mesh.block_cells(block)
+        linear: Array | float = 0.0
+        grid, mesh = self._snapshot.grid, self._mesh
+        edges = (grid.theta_edges[block], grid.r_edges[block])
+        wanted = (mesh.theta[place[0]], mesh.r[place[1]])
+        for axis, cells in enumerate((rows, columns)):
+            middles = centres(edges[axis])
+            if len(cells) == len(middles) or len(middles) < 2:
+                continue
+            slope = np.nan_to_num(np.gradient(mean, middles, axis=axis + 1))
+            offset = wanted[axis] - middles[cells]
+            linear = linear + slope[:, rows][:, :, columns] * (
+                offset[:, None] if axis == 0 else offset
+            )
+        return linear
+
+    def means(self) -> dict[str, Array]:
+        """Mean of each quantity, (n_theta, n_r); NaN where no cell of the ring was used."""
+        with np.errstate(invalid="ignore"):
+            found = self._totals / self._weight  # 0/0 where nothing was used
+        return dict(zip(self._names, found, strict=True))
+
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """What was left out."""
+        return _notes(self._count, self._lost / self._snapshot.grid.wedge_volume)
 
 
 def _notes(count: int, share: float) -> tuple[str, ...]:
