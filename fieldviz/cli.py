@@ -436,5 +436,54 @@ def _failed(reason: str) -> int:
     return 1
 
 
+host_app = App(name="host", help="The plugin for the host application.")
+app.command(host_app)
+
+
+@host_app.command(name="install")
+def host_install(
+    host: Path | None = None,
+    *,
+    folder: Path | None = None,
+    macros: Annotated[bool, Parameter(negative="--no-macros")] = True,
+) -> str:
+    """Install the plugin into a folder of its own, and say how to use and to undo it.
+
+    Example: fieldviz host install
+
+    Example: fieldviz host install /opt/host/bin/pvpython --folder my_plugin
+
+    Parameters
+    ----------
+    host
+        The host's pvpython; looked for by default.
+    folder
+        Where to install; the user's data folder by default.
+    macros
+        Put buttons for finished scenes into the host's toolbar.
+    """
+    from fieldviz.commands.host import install
+
+    return install(host, folder, macros=macros)
+
+
+@host_app.command(name="check")
+def host_check(folder: Path | None = None, *, snapshot: Path | None = None) -> str:
+    """Load the installed plugin in the host, run every filter, and print what works.
+
+    Example: fieldviz host check
+
+    Parameters
+    ----------
+    folder
+        Where the plugin was installed; the usual place by default.
+    snapshot
+        Snapshot to try it on; one of the Saltmarsh disc by default.
+    """
+    from fieldviz.commands.host import check
+
+    return check(folder, snapshot)
+
+
 if __name__ == "__main__":
     main()

@@ -1,0 +1,1 @@
+"""The plugin for the host application, ParaView: declaration, installer, check."""
