@@ -70,6 +70,7 @@ def _profile(found: dict[str, Any]) -> FluxProfile:
         float(found["h"]),
         period,
         kernel,
+        bool(found["quiet"]),
         np.array(found["bridged"], dtype=bool),
         tuple(found["notes"]),
     )

@@ -20,7 +20,7 @@ from fieldviz.filters.pieces import (
 )
 from fieldviz.filters.ranks import Ranks, whole_snapshot
 from fieldviz.filters.trees import describe
-from fieldviz.sheets.criteria import CONTRAST, COVERAGE, PROMINENCE
+from fieldviz.sheets.criteria import CONTRAST, COVERAGE
 from fieldviz.sheets.flux_sheets import FluxSheet, FluxSheets, find_flux_sheets
 from fieldviz.wedge.snapshot import Snapshot
 from fieldviz.wedge.typing import Array, IntArray
@@ -44,7 +44,7 @@ class FluxSheetSurfaces(FieldvizAlgorithm):
     Radii, Thickness
         Radii to search (0, 0 for all); H/R (0: worked out).
     Contrast, Prominence, Coverage
-        Thresholds; see `SheetCriteria`.
+        Thresholds; see `SheetCriteria`. Prominence 0: 0.5, or 0.02 without noise.
     Patches : bool
         Also what covers too little of the azimuth to be called a sheet.
     """
@@ -55,7 +55,7 @@ class FluxSheetSurfaces(FieldvizAlgorithm):
         "Radii": Setting((0.0, 0.0)),
         "Thickness": Setting(0.0),
         "Contrast": Setting(CONTRAST),
-        "Prominence": Setting(PROMINENCE),
+        "Prominence": Setting(0.0),
         "Coverage": Setting(COVERAGE),
         "Patches": Setting(0),
     }
@@ -70,7 +70,7 @@ class FluxSheetSurfaces(FieldvizAlgorithm):
             thickness=given_value(self.GetThickness()),
             r_range=given_range(self.GetRadii()),
             contrast=self.GetContrast(),
-            prominence=self.GetProminence(),
+            prominence=given_value(self.GetProminence()),
             coverage=self.GetCoverage(),
         )
         self.UpdateProgress(0.8)

@@ -20,7 +20,8 @@ __all__ = [
 ]
 
 CONTRAST = 3.0  # f over its background
-PROMINENCE = 0.5  # height of a maximum over the saddle to a higher one, in backgrounds
+# Height of a maximum over the saddle to a higher one, in backgrounds: without and with noise.
+LEAST_PROMINENCE, PROMINENCE = 0.02, 0.5
 RISE = 1.5  # f above its background, in spreads
 ABSOLUTE = 5.0  # the same where the background is no scale
 COVERAGE = 0.6  # share of the azimuth over which a ridge must be there
@@ -38,8 +39,10 @@ class SheetCriteria:
     ----------
     contrast : float
         f = r <B_z> at the peak must exceed this many backgrounds b ...
-    prominence : float
-        ... and the maximum stand out by this many b (topographic prominence),
+    prominence : float or None
+        ... and the maximum stand out by this many b (topographic prominence); None for 0.5, or for
+        0.02 where the profile has hardly any noise from ring to ring, so that sheets that merge
+        are two until they are one,
     rise : float
         ... and exceed b by this many spreads s.
     absolute : float
@@ -50,7 +53,7 @@ class SheetCriteria:
     """
 
     contrast: float = CONTRAST
-    prominence: float = PROMINENCE
+    prominence: float | None = None
     rise: float = RISE
     absolute: float = ABSOLUTE
     coverage: float = COVERAGE
@@ -58,6 +61,8 @@ class SheetCriteria:
     def __post_init__(self) -> None:
         for name in ("contrast", "prominence", "rise", "absolute", "coverage"):
             value = getattr(self, name)
+            if value is None and name == "prominence":
+                continue
             if not (np.isfinite(value) and value >= 0) or (name == "coverage" and value > 1):
                 wanted = "a share of 0 to 1" if name == "coverage" else "a number >= 0"
                 raise FieldvizError(
@@ -80,12 +85,17 @@ class SheetCriteria:
         )
         return np.maximum(least, _NEGLIGIBLE * float(np.abs(profile.smooth).max()))
 
-    @property
-    def note(self) -> str:
+    def least_prominence(self, profile: FluxProfile) -> float:
+        """How far a maximum must stand out, in backgrounds."""
+        if self.prominence is not None:
+            return self.prominence
+        return LEAST_PROMINENCE if profile.quiet else PROMINENCE
+
+    def note(self, profile: FluxProfile) -> str:
         """The thresholds in words."""
         return (
             f"thresholds are our choice: a peak exceeds {self.contrast:g} backgrounds, stands out "
-            f"by {self.prominence:g} of them and exceeds the background by {self.rise:g} spreads; "
-            f"by {self.absolute:g} spreads where the background is no scale; its ridge covers "
-            f"{100 * self.coverage:g} % of the azimuth"
+            f"by {self.least_prominence(profile):g} of them and exceeds the background by "
+            f"{self.rise:g} spreads; by {self.absolute:g} spreads where the background is no "
+            f"scale; its ridge covers {100 * self.coverage:g} % of the azimuth"
         )

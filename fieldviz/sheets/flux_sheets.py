@@ -11,7 +11,6 @@ from fieldviz.sheets.criteria import (
     ABSOLUTE,
     CONTRAST,
     COVERAGE,
-    PROMINENCE,
     RISE,
     SheetCriteria,
 )
@@ -19,7 +18,6 @@ from fieldviz.sheets.flux_map import MIDPLANE, FluxMap, flux_maps
 from fieldviz.sheets.flux_profile import (
     BACKGROUND_REACH,
     BAND,
-    SMOOTHING,
     FluxProfile,
     flux_profile,
 )
@@ -58,10 +56,10 @@ def find_flux_sheets(
     thickness: float | None = None,
     r_range: tuple[float, float] | None = None,
     band: float = BAND,
-    smoothing: float = SMOOTHING,
+    smoothing: float | None = None,
     background_reach: float = BACKGROUND_REACH,
     contrast: float = CONTRAST,
-    prominence: float = PROMINENCE,
+    prominence: float | None = None,
     rise: float = RISE,
     absolute: float = ABSOLUTE,
     coverage: float = COVERAGE,
@@ -79,11 +77,12 @@ def find_flux_sheets(
         Radii to search; leave out what a boundary treatment damps. The whole wedge by default.
     band : float
         Half thickness of the band about the midplane, scale heights.
-    smoothing : float
-        Standard deviation of the smoothing of the profile, scale heights.
+    smoothing : float, optional
+        Standard deviation of the smoothing of the profile, scale heights; by default what its noise
+        asks for, see `flux_profile`.
     background_reach : float
         Half width of the running median, scale heights.
-    contrast, prominence, rise, absolute, coverage : float
+    contrast, prominence, rise, absolute, coverage : float, optional
         Thresholds; see `SheetCriteria`.
     lean : bool
         Whether to follow the sheets to 1 H above and below the midplane.
@@ -141,7 +140,11 @@ def find_flux_sheets(
         (float(profile.r_edges[0]), float(profile.r_edges[-1])),
         work.total,
         work.unsigned,
-        (*profile.notes, criteria.note, *_more_notes(work, profile, of_band, relation, criteria)),
+        (
+            *profile.notes,
+            criteria.note(profile),
+            *_more_notes(work, profile, of_band, relation, criteria),
+        ),
     )
 
 

@@ -123,16 +123,16 @@ def profile_peaks(
     list of Candidate
         In order of radius. The peak is that of the parabola through three rings.
     """
-    background = polarity * profile.background
     least = criteria.threshold(profile, polarity)
     absolute = criteria.without_scale(profile, polarity)
+    stands_out = criteria.least_prominence(profile)
     cells, properties = find_peaks(smooth, prominence=0)
     found = []
     for i, prominence in zip(cells, properties["prominences"], strict=True):
         value = smooth[i]
         if value <= 0 or value <= least[i]:
             continue
-        if prominence <= criteria.prominence * abs(background[i]):
+        if prominence <= stands_out * abs(profile.background[i]):
             continue
         x, height = _vertex(profile.x, smooth, int(i))
         n_phi = len(profile.midplane.phi_edges) - 1

@@ -318,7 +318,7 @@ def _notes(
         f"H; a merged sheet holds {100 * kept_flux:g} % of the flux of both; these are our choice",
         "a sheet missed for one output is bridged; two sheets count as one as soon as the "
         "smoothing and the least prominence let no saddle be seen between them",
-        *dict.fromkeys(sheets.criteria.note for _, sheets in outputs),
+        *dict.fromkeys(sheets.criteria.note(sheets.profile) for _, sheets in outputs),
     ]
     if dropped:
         notes.append(f"{dropped} outputs with the time of the one before were left out")

@@ -96,7 +96,7 @@ def test_maxima_are_those_scipy_finds_in_the_closed_form(small_disc):
 
 def test_numbers_of_a_sheet_against_closed_forms(small_disc):
     law = fv.SaltmarshDisc(time=10.0)
-    found = find_flux_sheets(small_disc(shape=(1, 96, 256), time=10.0), band=0.1)
+    found = find_flux_sheets(small_disc(shape=(1, 96, 256), time=10.0), band=0.1, smoothing=0.1)
     for s in found:
         assert s.flux == pytest.approx(law.flux(*s.limits), rel=2e-3)
         assert s.share == pytest.approx(s.flux / law.flux(1, 5), rel=1e-9)
@@ -252,7 +252,7 @@ def test_one_azimuth_is_the_mean_of_many(small_disc):
     one = find_flux_sheets(small_disc(shape=(1, 96, 128)))
     same(one, find_flux_sheets(small_disc(shape=(8, 96, 128))))
     assert any("too few for ridges" in note for note in one.notes)
-    assert all(s.coverage == 1 and s.wander == 0 for s in one)
+    assert all(s.coverage == 1 and s.wander < 1e-12 for s in one)
 
 
 def test_cell_values_alone(small_disc):
@@ -282,7 +282,7 @@ def test_single_precision(small_disc):
 def test_radius_width_and_flux_of_a_bell(sd, height, radius, strength):
     """FWHM without the smoothing, position and flux of a lone bell of any strength and sign."""
     made = vertical(lambda r, _: strength * bells(r, [(radius, height, sd)]))
-    (s,) = find_flux_sheets(made, thickness=H, lean=False)
+    (s,) = find_flux_sheets(made, thickness=H, lean=False, smoothing=0.1)
     assert s.polarity == np.sign(strength)
     assert np.log(s.radius / radius) / H == pytest.approx(0, abs=0.02)
     assert s.width == pytest.approx(sd * FWHM, rel=0.03)

@@ -80,6 +80,15 @@ def test_merge_and_split_at_the_exact_outputs():
     assert [len(found) for found in history.found] == [5] * 6 + [4] + [5] * 6
 
 
+@pytest.mark.parametrize("shape", [(1, 48, 192), (4, 48, 256)])
+def test_without_noise_events_are_at_the_right_outputs_by_default(shape):
+    history = track_flux_sheets(snapshots(shape))
+    assert [(event.kind, event.time) for event in history.events] == [
+        ("merge", 7.0),
+        ("split", 7.5),
+    ]
+
+
 def seen_maxima(time, low, high):
     """Maxima of the closed form as the usual smoothing and prominence let them be seen."""
     x = np.arange(0, np.log(5) / H, 0.005)
@@ -95,7 +104,8 @@ def seen_maxima(time, low, high):
 
 def test_the_usual_smoothing_merges_earlier_and_splits_later():
     """At the outputs at which the smoothed closed form has one maximum or two."""
-    history = track_flux_sheets(snapshots((1, 32, 192)), thickness=H, lean=False)
+    noisy = {"smoothing": 0.1, "prominence": 0.5}  # as they are where there is noise
+    history = track_flux_sheets(snapshots((1, 32, 192)), thickness=H, lean=False, **noisy)
     merged = next(t for t in TIMES if seen_maxima(t, 1.7, 2.4) == 1)
     parted = next(t for t in TIMES if seen_maxima(t, 2.6, 3.5) == 2)
     assert merged < LAW.events()["merge"]
