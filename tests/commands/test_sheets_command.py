@@ -49,8 +49,8 @@ def test_json_has_the_same_numbers(capsys, folder):
 def test_several_files_give_tracks(capsys, folder):
     code, out, err = call(capsys, "sheets", *sorted(folder.glob("*.h5"), reverse=True))
     assert code == 0
-    # Two sheets of the demo merge at t = 6.667.
-    assert out.startswith("5 tracks of flux sheets; merge: 1\n")
+    # Two sheets of the demo merge at t = 6.667, one splits at 7.333.
+    assert out.startswith("6 tracks of flux sheets; merge: 1, split: 1\n")
     assert "disc_0.h5 to disc_2.h5, t = 0 to 8" in out
     event = next(line.split() for line in out.splitlines() if line.startswith("  merge"))
     assert event[1:4] == ["4", "to", "8"]
@@ -62,7 +62,7 @@ def test_a_pattern_is_a_series_too(capsys, folder):
     answer = json.loads(call(capsys, "sheets", folder / "disc_*.h5", "--json")[1])
     assert len(answer["files"]) == 3
     assert answer["times"] == [0.0, 4.0, 8.0]
-    assert {event["kind"] for event in answer["events"]} == {"merge"}
+    assert {event["kind"] for event in answer["events"]} == {"merge", "split"}
 
 
 def test_radii_can_be_chosen(capsys, folder):
