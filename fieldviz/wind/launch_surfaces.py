@@ -254,7 +254,7 @@ def _columns(
         return surface, label, _contour(mesh, state.beta_total, state.notes), []
     raise FieldvizError(
         f"Cannot {_WORK}: expected a height in H, one of {', '.join(SURFACE_KINDS)}, or a field "
-        f"and its value, got {surface!r}."
+        f"and its value, got {surface!r}; name one of these."
     )
 
 
