@@ -7,6 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from fieldviz.diagnostics.summary import median
 from fieldviz.errors import MissingFieldError
 from fieldviz.lines.critical_points import CriticalPoints, critical_points
 from fieldviz.lines.line_set import LineSet
@@ -67,21 +68,16 @@ def _side(points: CriticalPoints, mine: Array) -> dict[str, object]:
     limit = points.lambda_A_is_limit[mine]
     return {
         "lines": len(chosen),
-        "foot_radius_median": _median(points.footpoint[mine]),
+        "foot_radius_median": median(points.footpoint[mine]),
         "cross": crossed,
-        "alfven_radius_median": _median(points.alfven.R[mine]),
+        "alfven_radius_median": median(points.alfven.R[mine]),
         "no_alfven_point": dict(unmet),
-        "lever_arm_alfven_median": _median(points.lambda_A[mine][~limit]),
+        "lever_arm_alfven_median": median(points.lambda_A[mine][~limit]),
         "lever_arm_alfven_lower_limits": int(limit.sum()),
-        "lever_arm_momentum_median": _median(points.lambda_l[mine]),
-        "mass_load_kappa_median": _median(points.kappa[mine]),
+        "lever_arm_momentum_median": median(points.lambda_l[mine]),
+        "mass_load_kappa_median": median(points.kappa[mine]),
         "drift_words": words,
     }
-
-
-def _median(values: Array) -> float | None:
-    known = values[np.isfinite(values)]
-    return float(np.median(known)) if len(known) else None
 
 
 def wind_text(summary: dict[str, object]) -> list[str]:

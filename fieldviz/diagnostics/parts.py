@@ -25,7 +25,7 @@ class Part:
     function : str
         Takes the snapshot and gives a result.
     view : str
-        How it goes through the snapshot: "blocks", "tiles" or "whole", as of `Prepared`.
+        How it goes through the snapshot: "blocks" or "whole", as of `Prepared`.
     """
 
     name: str

@@ -202,7 +202,7 @@ def measure(snapshot: Snapshot, *, parts: Iterable[str] | None = None) -> Snapsh
     chosen = chosen_parts(parts)
     found: dict[str, PartResult] = {}
     ready = prepared(snapshot)
-    with sharing(ready.blocks), sharing(ready.tiles), sharing(ready.whole):
+    with sharing(ready.blocks), sharing(ready.whole):
         for part in chosen:
             found[part.name] = _run(part, ready.view(part.view))
     grid = snapshot.grid

@@ -11,7 +11,6 @@ from fieldviz.wedge.tiles import azimuth_window, tiled
 __all__ = [
     "MOST_KEPT",
     "PIECE_CELLS",
-    "TILE_CELLS",
     "WINDOW_CELLS",
     "Prepared",
     "field_bytes",
@@ -20,7 +19,6 @@ __all__ = [
 
 MOST_KEPT = 500e6  # bytes of all fields, cell values made from faces included, kept at once
 PIECE_CELLS = 1e6  # cells in memory at once of what is larger
-TILE_CELLS = 3e5  # cells whose many intermediate values fit into a processor's own memory
 WINDOW_CELLS = 4e6  # cells of the azimuths that are looked at where all must be in memory at once
 
 
@@ -32,15 +30,12 @@ class Prepared:
     ----------
     blocks : Snapshot
         For what goes block by block.
-    tiles : Snapshot
-        The same in small blocks, for what makes many intermediate values of each.
     whole : Snapshot
         For what needs whole fields: all of it, or some azimuths.
     notes : tuple of str
     """
 
     blocks: Snapshot
-    tiles: Snapshot
     whole: Snapshot
     notes: tuple[str, ...]
 
@@ -72,14 +67,14 @@ def prepared(snapshot: Snapshot) -> Prepared:
     """Choose how to go through a snapshot.
 
     Small ones are read once and kept, as every diagnostic asks for the same fields. Larger ones
-    are cut into tiles; what must see whole fields gets as many azimuths as fit.
+    are cut into pieces; what must see whole fields gets as many azimuths as fit.
     """
     if field_bytes(snapshot) <= MOST_KEPT:
-        made = {name: snapshot.cell(name) for name in snapshot.cell_names}
+        for name in snapshot.cell_names:
+            snapshot.cell(name)
         for name in snapshot.faces:
             snapshot.faces[name]
-        tiles = tiled(snapshot.with_cells(**made), TILE_CELLS)
-        return Prepared(snapshot, tiles, snapshot, ())
+        return Prepared(snapshot, snapshot, ())
     window = azimuth_window(snapshot, WINDOW_CELLS)
     pieces = tiled(snapshot, PIECE_CELLS)
     notes: tuple[str, ...] = (
@@ -97,4 +92,4 @@ def prepared(snapshot: Snapshot) -> Prepared:
             f"{100 * share:.3g} % of the azimuth, whose first and last cell see each other as "
             "neighbours",
         )
-    return Prepared(pieces, tiled(snapshot, TILE_CELLS), window, notes)
+    return Prepared(pieces, window, notes)

@@ -25,7 +25,7 @@ from fieldviz.wedge.typing import Array
 if TYPE_CHECKING:
     from fieldviz.diagnostics.snapshot_numbers import PartResult, SnapshotNumbers
 
-__all__ = ["summary_table"]
+__all__ = ["median", "summary_table"]
 
 Value = float | int | str | None
 Row = tuple[str, Value | Absent, Dimension | str]

@@ -53,11 +53,6 @@ class ConeTable:
         widths = annulus_widths(self.r_edges) * np.sin(self.theta)
         return np.asarray(np.diff(self.phi_edges)[:, None] * widths)
 
-    @property
-    def share_without_number(self) -> float:
-        """Share of the patches that had no number."""
-        return self.without_number / self.density.size
-
 
 def checked_theta(work: str, grid: WedgeGrid, theta: float) -> float:
     """Refuse a colatitude outside the wedge, or on the axis, where a cone has no area."""

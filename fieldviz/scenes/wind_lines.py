@@ -22,7 +22,6 @@ _HEIGHTS = (4.0, 5.0, 6.0, 7.0, 8.0, 10.0, 12.0)  # in H, tried from below
 _HIGHEST = 0.85  # of the angle both sides have: lines need room above their beginning
 _NEARLY_ALL = 0.9  # of the largest loss
 _WITHOUT_DENSITY = 0.7  # of the angle both sides have
-_STILL = 1e-12  # of the largest speed
 _SHORTEST = 0.02  # of the outer radius
 _SIDES = ("above", "below")
 
